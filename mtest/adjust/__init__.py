@@ -1,0 +1,1 @@
+"""Adjustment procedures: pure functions on arrays."""

@@ -1,0 +1,1 @@
+"""Arm sums to statistics to tallies, in blocks, on all cores."""

@@ -1,0 +1,1 @@
+"""Effects, their intervals, and the textbook tests that stand beside ours."""

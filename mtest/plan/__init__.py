@@ -1,0 +1,1 @@
+"""What was fixed in advance: records, reading, sealing."""

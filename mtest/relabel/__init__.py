@@ -1,0 +1,1 @@
+"""What the randomisation could have done: cells, keys, selection, enumeration."""

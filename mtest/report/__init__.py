@@ -1,0 +1,1 @@
+"""Facts to tables and figures to a page and a document."""

@@ -1,0 +1,1 @@
+"""Each endpoint as numbers that add up over an arm."""

@@ -1,0 +1,1 @@
+"""What was observed: sources, assembling, checks, frozen arrays."""
