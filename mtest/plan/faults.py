@@ -1,0 +1,184 @@
+"""From the record checker's findings to sentences in the plan author's words."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable
+from typing import Any, get_args
+
+from pydantic_core import ErrorDetails
+
+from mtest.plan.records import Plan, Record
+from mtest.plan.wording import item, nearest, shown
+
+ENUM_CUTOFF = 0.4  # a closed list of words may suggest more boldly than names may: 'down' is near enough to 'lower'
+
+# The rule in words, for each kind of finding that the records of the plan can lead to.
+RULES: dict[str, Callable[[dict[str, Any]], str]] = {
+    "literal_error": lambda ctx: f"must be {ctx['expected']}",
+    "string_type": lambda ctx: "must be text in quotation marks",
+    "string_too_short": lambda ctx: "must not be empty",
+    "int_type": lambda ctx: "must be a whole number",
+    "int_from_float": lambda ctx: "must be a whole number",
+    "float_type": lambda ctx: "must be a number",
+    "bool_type": lambda ctx: "must be true or false",
+    "greater_than": lambda ctx: f"must be greater than {ctx['gt']:g}",
+    "greater_than_equal": lambda ctx: f"must be at least {ctx['ge']:g}",
+    "less_than": lambda ctx: f"must be less than {ctx['lt']:g}",
+    "less_than_equal": lambda ctx: f"must be at most {ctx['le']:g}",
+    "finite_number": lambda ctx: "must be a finite number",
+    "tuple_type": lambda ctx: "must be a list",
+    "too_short": lambda ctx: f"must hold at least {ctx['min_length']} item{'s' if ctx['min_length'] > 1 else ''}",
+    "too_long": lambda ctx: f"must hold at most {ctx['max_length']} items",
+    "dict_type": lambda ctx: "must be a table of keys and values",
+    "model_type": lambda ctx: "must be a table of keys and values",
+    "model_attributes_type": lambda ctx: "must be a table of keys and values",
+}
+FALLBACK = "is not of the form that a plan takes here"
+
+# Where a field takes more than one form, the checker reports each form it tried; the author gets one sentence.
+SEVERAL_FORMS: dict[tuple[str, str], tuple[str, tuple[str, ...]]] = {
+    ("family", "endpoints"): ("must be 'all' or a list of at least one endpoint name", ("all",)),
+    ("family", "comparisons"): (
+        "must be 'each vs reference', 'all pairs' or a list of pairs such as [['4 %', 'vehicle']]",
+        ("each vs reference", "all pairs"),
+    ),
+    ("endpoint", "event"): ("must be text, a number, true or false", ()),
+    ("analysis_set", "where"): ("must give each column one value: text, a number, true or false", ()),
+}
+
+Location = tuple[str | int, ...]
+
+
+def sentences(errors: list[ErrorDetails], data: dict[str, Any]) -> list[str]:
+    """Return one sentence for each faulty place, without the file name.
+
+    Parameters
+    ----------
+    errors : list
+        The findings of pydantic's `ValidationError.errors()`.
+    data : dict
+        The plan as handed to the records.
+    """
+    found: dict[Location, str] = {}
+    for error in errors:
+        place = _existing(error["loc"], data) if error["type"] != "missing" else error["loc"]
+        if error["type"] == "too_short" and len(_at(place, data) or ()) >= error["ctx"]["min_length"]:
+            continue  # the checker counts only the sound items; the others have faults of their own
+        # Of several findings at one place the first is kept: they are the forms tried of one field.
+        found.setdefault(place, _sentence(error, place, data))
+    return list(found.values())
+
+
+def _sentence(error: ErrorDetails, place: Location, data: dict[str, Any]) -> str:
+    if error["type"] == "missing":
+        return _missing(place, data)
+    if error["type"] == "extra_forbidden":
+        return _unknown_key(place, data)
+    where, got = path(place, data), _at(place, data)
+    section = _written(place)
+    if error["type"] == "tuple_type" and isinstance(got, dict):
+        return f"{where} must be a list of tables; got one table. Write [[{section}]] instead of [{section}]."
+    if error["type"] in ("model_type", "model_attributes_type") and isinstance(got, tuple):
+        return f"{where} must be one table; got {shown(got)}. Write [{section}] instead of [[{section}]], once."
+    form = SEVERAL_FORMS.get((str(place[0]), str(place[2]))) if len(place) > 2 else None
+    if form is not None:
+        return f"{where} {form[0]}; got {shown(got)}.{nearest(got, form[1], cutoff=ENUM_CUTOFF)}"
+    context = error.get("ctx", {})
+    rule = RULES[error["type"]](context) if error["type"] in RULES else FALLBACK
+    choices = re.findall(r"'([^']*)'", str(context.get("expected", "")))
+    return f"{where} {rule}; got {shown(got)}.{nearest(got, choices, cutoff=ENUM_CUTOFF)}"
+
+
+def _missing(place: Location, data: dict[str, Any]) -> str:
+    key = place[-1]
+    if len(place) == 1:
+        many = key in ("endpoint", "family")
+        section = f"[[{key}]]" if many else f"[{key}]"
+        return f"the plan must have {'at least one section' if many else 'a section'} {section}; got none. Add it."
+    choices = [f'"{word}"' for word in _words(_annotation(place))]
+    example = f" = {' or '.join(choices)}" if choices else ""
+    return f"{path(place[:-1], data)} must have the key '{key}'; got none. Add {key}{example}."
+
+
+def _unknown_key(place: Location, data: dict[str, Any]) -> str:
+    record = _record(place[:-1])
+    known = list(record.model_fields) if record else []
+    where = f"in {path(place[:-1], data)}" if len(place) > 1 else "at the top level"
+    hint = nearest(place[-1], known) or " Remove it, or correct its spelling."
+    return f"unknown key '{place[-1]}' {where}; the keys known there are {', '.join(known)}.{hint}"
+
+
+def path(place: Location, data: dict[str, Any]) -> str:
+    """Return a place in the plan as its author counts: `endpoint[3] "Pain at rest".better`."""
+    text, here = "", data
+    for step in place:
+        here = _step(here, step)
+        if isinstance(step, int):
+            head, _, section = text.rpartition(".")
+            name = here.get("name", "") if isinstance(here, dict) else ""
+            text = (f"{head}." if head else "") + item(section, step, name)
+        else:
+            text = f"{text}.{step}" if text else step
+    return text
+
+
+def _existing(place: Location, data: dict[str, Any]) -> Location:
+    """Return the start of `place` that exists in the data; what follows are names of forms tried."""
+    here: Any = data
+    for count, step in enumerate(place):
+        here = _step(here, step)
+        if here is None:
+            return place[:count]
+        if (str(place[0]), str(step)) in SEVERAL_FORMS and count == 2:
+            return place[: count + 1]
+    return place
+
+
+def _at(place: Location, data: Any) -> Any:
+    for step in place:
+        data = _step(data, step)
+    return data
+
+
+def _step(here: Any, step: str | int) -> Any:
+    if isinstance(here, dict):
+        return here.get(step)
+    if isinstance(here, tuple) and isinstance(step, int) and step < len(here):
+        return here[step]
+    return None
+
+
+def _written(place: Location) -> str:
+    return ".".join(step for step in place if isinstance(step, str))
+
+
+def _annotation(place: Location) -> Any:
+    """Return the type of the field at `place`."""
+    record = _record(place[:-1])
+    return record.model_fields[str(place[-1])].annotation if record else None
+
+
+def _record(place: Location) -> type[Record] | None:
+    record: type[Record] | None = Plan
+    for step in place:
+        if isinstance(step, int):
+            continue
+        field = record.model_fields.get(step) if record else None
+        record = _first_record(field.annotation) if field else None
+    return record
+
+
+def _first_record(annotation: Any) -> type[Record] | None:
+    if isinstance(annotation, type) and issubclass(annotation, Record):
+        return annotation
+    for part in get_args(annotation):
+        found = _first_record(part)
+        if found:
+            return found
+    return None
+
+
+def _words(annotation: Any) -> tuple[Any, ...]:
+    """Return the words of a Literal, and nothing for any other type."""
+    return tuple(word for word in get_args(annotation) if isinstance(word, str))

@@ -1,0 +1,61 @@
+"""Text cells as numbers, and cells compared with the values a plan states."""
+
+from __future__ import annotations
+
+import re
+
+import numpy as np
+import pandas as pd
+
+from mtest.plan.wording import listed, shown
+from mtest.trial.sources import MISSING_TOKENS, Table
+
+NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
+INFINITE = re.compile(r"[+-]?inf(inity)?", re.IGNORECASE)
+WRONG_SHOWN = 3  # distinct wrong values that are shown
+
+
+def is_missing(cells: pd.Series) -> np.ndarray:
+    """Return (row,) bool: which cells hold one of `MISSING_TOKENS`."""
+    return cells.isin(MISSING_TOKENS).to_numpy()
+
+
+def numbers(cells: pd.Series, table: Table, faults: list[str], *, purpose: str) -> np.ndarray:
+    """Return (row,) float64, NaN where missing; text and infinite numbers are added to the faults."""
+    values = np.full(len(cells), np.nan)
+    is_text, is_infinite = np.zeros(len(cells), bool), np.zeros(len(cells), bool)
+    for row, cell in enumerate(cells):
+        if cell in MISSING_TOKENS:
+            continue
+        if NUMBER.fullmatch(cell):
+            values[row] = float(cell)
+            is_infinite[row] = np.isinf(values[row])  # 1e999
+        elif INFINITE.fullmatch(cell):
+            is_infinite[row] = True
+        else:
+            is_text[row] = True
+    for chosen, rule in ((is_text, "must be a number"), (is_infinite, "must be a finite number")):
+        if chosen.any():
+            faults.append(
+                f"{table.name}, {table.rows(cells.index[chosen])}: column {shown(cells.name)} {rule} ({purpose}); got "
+                f"{wrong(cells[chosen])}. "
+                "Correct the cell, or leave it empty, NA or '.' if the value is missing."
+            )
+    values[is_infinite] = np.nan
+    return values
+
+
+def equal_to(
+    cells: pd.Series, stated: str | int | float | bool, table: Table, faults: list[str], *, purpose: str
+) -> np.ndarray:
+    """Return (row,) bool: which cells equal a value stated in the plan: text as text, numbers as numbers."""
+    if isinstance(stated, bool):
+        return (cells.str.lower() == ("true" if stated else "false")).to_numpy()
+    if isinstance(stated, str):
+        return (cells == stated).to_numpy()
+    return numbers(cells, table, faults, purpose=purpose) == stated
+
+
+def wrong(cells: pd.Series) -> str:
+    """Return the distinct values of wrong cells, as a sentence shows them."""
+    return listed(list(dict.fromkeys(cells)), last="and", most=WRONG_SHOWN)

@@ -1,0 +1,106 @@
+"""Endpoints as numbers: text by kind into floats, missing values by the plan's rule."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+import pandas as pd
+
+from mtest.plan.records import DEFAULT_STATISTIC, Endpoint
+from mtest.plan.wording import listed, nearest, shown
+from mtest.trial.arrays import EndpointData
+from mtest.trial.cells import equal_to, is_missing, numbers, wrong
+from mtest.trial.sources import MISSING_TOKENS, Table
+
+
+def as_numbers(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], *, where: str) -> np.ndarray:
+    """Return (row,) float64 of an endpoint's cells, NaN where missing or wrong.
+
+    Ordinal levels become 0, 1, 2, ... from lowest to highest; a binary event becomes 1 and anything else 0.
+    """
+    return CONVERTERS[endpoint.kind](cells, endpoint, table, faults, where)
+
+
+def filled(values: np.ndarray, endpoint: Endpoint) -> np.ndarray:
+    """Return (subject,) float64 in which missing values are given what the endpoint's missing-data rule says.
+
+    "worst-score": of a ranked endpoint one below the worst observed value (one above, where lower is better), so that
+    all who are missing share the worst rank; of a binary endpoint the worse of 0 and 1.
+    """
+    if endpoint.missing == "available" or np.isnan(values).all():
+        return values
+    if endpoint.kind == "binary":
+        worst = 0.0 if endpoint.better == "higher" else 1.0
+    else:
+        worst = np.nanmin(values) - 1 if endpoint.better == "higher" else np.nanmax(values) + 1
+    return np.where(np.isnan(values), worst, values)
+
+
+def endpoint_data(endpoint: Endpoint, observed: np.ndarray, arm: np.ndarray, n_arms: int) -> EndpointData:
+    """Return an endpoint as the engine takes it; `observed` and `arm` are per subject."""
+    values = filled(observed, endpoint)
+    n_filled = np.bincount(arm[np.isnan(observed) & ~np.isnan(values)], minlength=n_arms)
+    for array in (values, n_filled):
+        array.setflags(write=False)
+    return EndpointData(
+        name=endpoint.name,
+        kind=endpoint.kind,
+        statistic=endpoint.statistic or DEFAULT_STATISTIC[endpoint.kind],
+        better=endpoint.better,
+        missing=endpoint.missing,
+        unit=endpoint.unit,
+        group=endpoint.group,
+        values=values,
+        n_filled=n_filled,
+    )
+
+
+def _continuous(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], where: str) -> np.ndarray:
+    return numbers(cells, table, faults, purpose=where)
+
+
+def _ordinal(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], where: str) -> np.ndarray:
+    if not endpoint.levels:
+        return numbers(cells, table, faults, purpose=where)
+    for level in set(endpoint.levels) & set(MISSING_TOKENS):
+        faults.append(
+            f"{table.name}: a level must not be a sign for a missing value ({where}); got level {shown(level)}. "
+            "Rename the level in the plan and in the data."
+        )
+    rank = {level: float(place) for place, level in enumerate(endpoint.levels)}
+    values = np.array([rank.get(cell, np.nan) for cell in cells])
+    unknown = np.isnan(values) & ~is_missing(cells)
+    for label in dict.fromkeys(cells[unknown]):
+        rows = table.rows(cells.index[cells == label])
+        hint = nearest(label, endpoint.levels) or " Correct the cell, or add the level."
+        faults.append(
+            f"{table.name}, {rows}: column {shown(cells.name)} must hold one of the levels {listed(endpoint.levels)} "
+            f"({where}); got {shown(label)}.{hint}"
+        )
+    return values
+
+
+def _binary(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], where: str) -> np.ndarray:
+    missing = is_missing(cells)
+    if endpoint.event is None:
+        values = numbers(cells, table, faults, purpose=f"{where}; for text name the event in the plan")
+        odd = ~np.isnan(values) & (values != 0) & (values != 1)
+        if odd.any():
+            faults.append(
+                f"{table.name}, {table.rows(cells.index[odd])}: column {shown(cells.name)} must hold "
+                f"0 or 1 ({where}); got {wrong(cells[odd])}. Correct the cell, or name the event in the plan."
+            )
+        return values
+    distinct = list(dict.fromkeys(cells[~missing]))
+    if len(distinct) > 2:
+        faults.append(
+            f"{table.name}: column {shown(cells.name)} must hold at most two different values ({where}); "
+            f"got {listed(distinct, last='and', most=5)}. Make them one word for the event and one for no event."
+        )
+    event = equal_to(cells, endpoint.event, table, faults, purpose=where)
+    return np.where(missing, np.nan, event.astype(float))
+
+
+Converter = Callable[[pd.Series, Endpoint, Table, list[str], str], np.ndarray]
+CONVERTERS: dict[str, Converter] = {"continuous": _continuous, "ordinal": _ordinal, "binary": _binary}
