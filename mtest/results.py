@@ -62,7 +62,7 @@ class HypothesisResult:
     step: int  # 1 = first hypothesis considered by the procedure
     rejected: bool
     settled: bool  # the Monte Carlo interval lies on one side of alpha
-    near_ties: int  # draws within 1000 tolerances of the observed value
+    near_ties: int  # draws that fall short of the observed value by more than 1 and less than 1000 tolerances
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -96,6 +96,7 @@ class FamilyResult:
     smallest_p: float
     control: str  # the control statement
     hypotheses: tuple[HypothesisResult, ...]
+    counts: tuple[tuple[str, np.ndarray], ...]  # name -> (hypothesis,) draws at or above the observed statistic
     null: NullDistribution | None  # None under "boole", where each pair has its own
     correlation: np.ndarray | None  # (hypothesis, hypothesis) of the null statistics over the pilot draws
     equivalent_endpoints: float  # log(1 - alpha) / log(1 - local alpha); NaN where not offered

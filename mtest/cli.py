@@ -1,0 +1,152 @@
+"""The command line: the only place that prints and exits."""
+
+from __future__ import annotations
+
+import os
+import sys
+import tempfile
+import traceback
+from pathlib import Path
+from typing import Annotated
+
+import typer
+from rich.console import Console
+
+import mtest
+from mtest.analyse import run_plan
+from mtest.bundle.replay import replay_bundle
+from mtest.bundle.write import check_target, write_bundle
+from mtest.errors import MtestError
+from mtest.plan.read import read_plan
+from mtest.progress import Bar, Lines, Quiet
+from mtest.results import AnalysisResult, FamilyResult
+
+app = typer.Typer(
+    add_completion=False, no_args_is_help=True, pretty_exceptions_enable=False, help="Which differences are real."
+)
+_err = Console(stderr=True, soft_wrap=True)
+_out = Console(soft_wrap=True)
+
+INTERRUPTED = 130  # the shell's convention for Ctrl-C
+
+
+@app.callback(invoke_without_command=True)
+def _root(version: Annotated[bool, typer.Option("--version", help="Print the version and leave.")] = False) -> None:
+    """Adjusted p-values, estimates and tables for randomised studies with many endpoints and several arms."""
+    if version:
+        _out.print(f"mtest {mtest.__version__}", highlight=False)
+        raise typer.Exit()
+
+
+Jobs = Annotated[int, typer.Option("--jobs", min=0, help="Workers; 0 means one per core. Changes no digit.")]
+Silent = Annotated[bool, typer.Option("--quiet", help="Show no progress and no summary.")]
+
+
+@app.command()
+def run(
+    plan: Annotated[Path, typer.Argument(help="The analysis plan, a TOML file.")],
+    out: Annotated[
+        Path | None, typer.Option("--out", help="The folder to write; default: out/ and the plan's name.")
+    ] = None,
+    jobs: Jobs = 0,
+    quiet: Silent = False,
+) -> None:
+    """Carry out a plan and leave a bundle: results, report, tables, manifest."""
+    plan_file = read_plan(plan)
+    folder = out or Path("out") / plan_file.path.stem
+    check_target(folder)
+    with _shown(quiet) as show:
+        result = run_plan(plan_file, n_jobs=jobs, report=show)
+    write_bundle(result, folder, plan_text=plan_file.text, data_folder=plan_file.path.parent.as_posix())
+    if not quiet:
+        _summarise(result, folder)
+
+
+@app.command()
+def replay(
+    bundle: Annotated[Path, typer.Argument(help="A folder that `mtest run` wrote.")],
+    data: Annotated[
+        Path | None, typer.Option("--data", help="The folder the plan's data paths start from; default: as recorded.")
+    ] = None,
+    jobs: Jobs = 0,
+    quiet: Silent = False,
+) -> None:
+    """Run a bundle's plan again and compare every count with the bundle's."""
+    with _shown(quiet) as show:
+        compared = replay_bundle(bundle, data=data, n_jobs=jobs, report=show)
+    if not quiet:
+        _out.print(f"The same: {compared:,} counts agree with {bundle}.", highlight=False)
+
+
+def _shown(quiet: bool) -> Quiet:
+    if quiet:
+        return Quiet()
+    return Bar(_err) if _err.is_terminal else Lines(_err)
+
+
+def _summarise(result: AnalysisResult, folder: Path) -> None:
+    """Print the answer in a few lines, and where the report is."""
+    for family in result.families:
+        _out.print(_verdict(family), highlight=False)
+        for h in family.hypotheses:
+            if h.rejected:
+                _out.print(f"  {h.endpoint}: {h.arm} vs {h.reference}", highlight=False)
+        for warning in family.warnings:
+            _err.print(f"Warning: {warning}", highlight=False)
+    for warning in result.warnings:
+        _err.print(f"Warning: {warning}", highlight=False)
+    _out.print(f"Report: {folder / 'report.html'}", highlight=False)
+
+
+def _verdict(family: FamilyResult) -> str:
+    rejected = sum(h.rejected for h in family.hypotheses)
+    how = "enumerated" if family.exact else "drawn"
+    return (
+        f"{family.name}: {rejected} of {len(family.hypotheses)} hypotheses rejected at {family.alpha:g} "
+        f"({family.procedure}; {family.n_draws:,} relabellings {how})."
+    )
+
+
+def main() -> None:
+    """Run the command line; every failure ends in one sentence a fault and its exit code."""
+    try:
+        code = app(standalone_mode=False)
+    except MtestError as error:
+        _say(error.faults)
+        code = error.exit_code
+    except typer.Abort:
+        code = INTERRUPTED
+    except KeyboardInterrupt:
+        _say(["Interrupted; nothing was written."])
+        # Threads in the middle of a block would be waited for: leave at once.
+        sys.stderr.flush()
+        os._exit(INTERRUPTED)
+    except Exception as error:
+        code = _usage(error)
+    sys.exit(code)
+
+
+def _usage(error: Exception) -> int:
+    """Return the exit code of a faulty command line, or of a bug of ours, after saying so."""
+    message = getattr(error, "format_message", None)
+    if message is not None:
+        _say([f"mtest: {message()} Try 'mtest --help'."])
+        return 2
+    with tempfile.NamedTemporaryFile("w", prefix="mtest-bug-", suffix=".txt", delete=False) as file:
+        file.write(traceback.format_exc())
+    _say(
+        [
+            f"mtest: this is a fault of the program, not of your plan or data ({type(error).__name__}); nothing was "
+            f"written. Please report it with {file.name}."
+        ]
+    )
+    return 1
+
+
+def _say(sentences) -> None:
+    for sentence in sentences:
+        _err.print(sentence, markup=False, highlight=False)
+
+
+if __name__ == "__main__":
+    main()

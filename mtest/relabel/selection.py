@@ -1,0 +1,94 @@
+"""From keys to labels: in each cell the lowest keys go to the first arm, the next to the second, and so on.
+
+A threshold is enough; nobody is shuffled. A key that ties exactly at a threshold would give an arm too many subjects:
+such a draw of such a set is resolved with fresh keys. Whether a draw is tied does not depend on who in a cell holds
+which key, so every relabelling stays equally likely.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from mtest.relabel.keys import KeyStream
+from mtest.relabel.sets import ReferenceSet
+
+_FRESH = 7  # the branch of a block's address under which fresh keys are drawn
+
+
+class Selector:
+    """Labels of one reference set from its subjects' keys.
+
+    Parameters
+    ----------
+    reference_set : ReferenceSet
+    seed : int
+        For the fresh keys of tied draws.
+    """
+
+    def __init__(self, reference_set: ReferenceSet, *, seed: int) -> None:
+        self._set = reference_set
+        self._seed = seed
+        self._n = len(reference_set.subjects)
+        self._one_cell = len(reference_set.sizes) == 1
+        start = np.concatenate([[0], np.cumsum(reference_set.sizes.sum(axis=1))[:-1]])
+        last = start[:, None] + np.cumsum(reference_set.sizes, axis=1)  # one past the last place of each arm
+        # Places of the sorted keys that close an arm; -1 where no subject of the cell lies below the border.
+        self._borders = [np.where(last[:, k] > start, last[:, k] - 1, -1) for k in range(last.shape[1] - 1)]
+        self._open = [last[:, k] < start + reference_set.sizes.sum(axis=1) for k in range(last.shape[1] - 1)]
+        # Cells stand in the high half of a 64-bit key, counted from 1, so that one sort orders all cells at once.
+        self._high = (reference_set.cell.astype(np.uint64) + 1) << np.uint64(32)
+        self._below = (np.arange(len(reference_set.sizes), dtype=np.uint64) + 1 << np.uint64(32)) - np.uint64(1)
+
+    def select(self, keys: np.ndarray, indicators: list[np.ndarray], *, block: int, first_draw: int) -> None:
+        """Write who is in each arm but the last.
+
+        Parameters
+        ----------
+        keys : (draw, subject) uint32
+        indicators : list over arms but the last of (draw, subject) float64, overwritten with 0 and 1
+        block, first_draw : int
+            Where the draws stand, for the address of fresh keys.
+        """
+        ordered, values = self._sorted(keys)
+        tied = self._thresholds(ordered, values, indicators)
+        for draw in np.flatnonzero(tied):
+            self._resolve(indicators, draw=int(draw), block=block, first_draw=first_draw)
+
+    def _sorted(self, keys: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """Return the keys in order and the keys as compared, with the cell in the high half if there are several."""
+        values = keys if self._one_cell else keys | self._high
+        return np.sort(values, axis=1), values
+
+    def _thresholds(self, ordered, values, indicators) -> np.ndarray:
+        """Write the indicators and return (draw,) bool, true where a border is tied."""
+        tied = np.zeros(len(values), dtype=bool)
+        lower: np.ndarray | None = None
+        for border, is_open, indicator in zip(self._borders, self._open, indicators, strict=True):
+            upper = self._spread(ordered, border)
+            np.less_equal(values, upper, out=indicator, casting="unsafe")
+            if lower is not None:
+                indicator *= values > lower
+            lower = upper
+            inside = is_open & (border >= 0)
+            at = border[inside]
+            tied |= np.any(ordered[:, at] == ordered[:, at + 1], axis=1)
+        return tied
+
+    def _spread(self, ordered: np.ndarray, border: np.ndarray) -> np.ndarray:
+        """Return each subject's threshold, (draw, subject), or (draw, 1) where there is one cell."""
+        if self._one_cell:
+            return ordered[:, border]  # an arm of the set is never empty over all cells
+        thresholds = ordered[:, border]
+        empty = border < 0
+        thresholds[:, empty] = self._below[empty]
+        return np.take(thresholds, self._set.cell, axis=1)
+
+    def _resolve(self, indicators, *, draw: int, block: int, first_draw: int) -> None:
+        """Draw fresh keys for one draw of this set until no border is tied."""
+        for attempt in range(1000):
+            address = (block, _FRESH, self._set.code, first_draw + draw, attempt)
+            keys = KeyStream(self._seed, address, self._n).read(1)
+            rows = [indicator[draw : draw + 1] for indicator in indicators]
+            if not self._thresholds(*self._sorted(keys), rows).any():
+                return
+        raise AssertionError("a thousand tied draws in a row: the key stream is broken")

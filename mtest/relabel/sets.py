@@ -1,0 +1,65 @@
+"""Reference sets: whose labels are exchanged with whose."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import comb, prod
+
+import numpy as np
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ReferenceSet:
+    """Subjects whose arm labels are exchanged, within cells, with the arm sizes of each cell kept.
+
+    name : for messages and tables, e.g. "4 % vs vehicle"
+    code : int, the set's own address among the key streams
+    arms : indices of the arms in the study; the first gets the lowest keys
+    subjects : (subject,) intp, positions among the study's subjects, ascending
+    arm : (subject,) intp, index into `arms`
+    cell : (subject,) intp, 0 .. n_cells - 1
+    sizes : (cell, arm) intp
+    """
+
+    name: str
+    code: int
+    arms: tuple[int, ...]
+    subjects: np.ndarray
+    arm: np.ndarray
+    cell: np.ndarray
+    sizes: np.ndarray
+
+
+def pair_set(arm: np.ndarray, cell: np.ndarray, pair: tuple[int, int], *, n_arms: int, name: str) -> ReferenceSet:
+    """Return the reference set of the subjects of two arms: pair = (tested, reference)."""
+    return _reference_set(arm, cell, pair, code=1 + pair[0] * n_arms + pair[1], name=name)
+
+
+def whole_set(arm: np.ndarray, cell: np.ndarray, *, n_arms: int, name: str) -> ReferenceSet:
+    """Return the reference set of all subjects and arms."""
+    return _reference_set(arm, cell, tuple(range(n_arms)), code=1 + n_arms * n_arms, name=name)
+
+
+def _reference_set(arm, cell, arms, *, code, name) -> ReferenceSet:
+    local = np.full(arm.max() + 1, -1)
+    local[list(arms)] = np.arange(len(arms))
+    subjects = np.flatnonzero(local[arm] >= 0)
+    _, cells = np.unique(cell[subjects], return_inverse=True)
+    arms_of = local[arm[subjects]]
+    sizes = np.zeros((cells.max() + 1, len(arms)), dtype=np.intp)
+    np.add.at(sizes, (cells, arms_of), 1)
+    return ReferenceSet(name=name, code=code, arms=arms, subjects=subjects, arm=arms_of, cell=cells, sizes=sizes)
+
+
+def count_relabellings(sizes: np.ndarray) -> int:
+    """Return the number of distinct relabellings as an exact integer: a product of multinomials over cells."""
+    return prod(_multinomial([int(n) for n in row]) for row in sizes)
+
+
+def _multinomial(counts: list[int]) -> int:
+    """Return (sum counts)! / prod(counts!)."""
+    total, ways = 0, 1
+    for count in counts:
+        total += count
+        ways *= comb(total, count)
+    return ways
