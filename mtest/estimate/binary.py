@@ -66,7 +66,7 @@ def risk_ratio(values: np.ndarray, in_arm: np.ndarray, *, stratum: np.ndarray, l
     -------
     Effect
         `se` is that of the LOGARITHM. One stratum: score interval (Koopman 1984), agreeing with the Pearson
-        chi-squared test. Several: Mantel-Haenszel with the variance of Greenland & Robins (1985, eq. 13) on the log
+        chi-squared test. Several: Mantel-Haenszel with the variance of Greenland & Robins (1985) on the log
         scale. Without events in the reference the estimate is infinite (NaN without events at all), without events in
         the tested arm it is 0; the score interval is then open to that side, the Mantel-Haenszel interval NaN.
 

@@ -47,7 +47,7 @@ def probability_better(
     In stratum s let V_i, for a subject of the tested arm, be the share of the reference's subjects (ties half) that it
     beats, and for a subject of the reference the share of the tested arm's subjects that beat it: its placement. Both
     arms' placements have the mean theta_s, and Var(theta_s) is estimated by S2_a / n_a + S2_b / n_b with their sample
-    variances (Brunner & Munzel 2000, eqs. 4.4 to 4.6, where placements are written as differences of midranks).
+    variances (Brunner & Munzel 2000, where placements are written as differences of midranks).
 
     Several strata: theta = sum w_s theta_s / sum w_s with w_s = n_a n_b / (n_a + n_b + 1), the weights of van Elteren
     (1960), best under no effect without ties. The strata's variances add up with weight w_s^2. A stratum with only

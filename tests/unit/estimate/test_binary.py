@@ -84,7 +84,7 @@ def test_respiratory_trial_odds_ratios_stratified_by_centre(month, published):
 
 @pytest.mark.parametrize("tables", [RABBITS, UNEVEN])
 def test_mantel_haenszel_risk_ratio_by_the_sums_of_the_paper(tables):
-    """Greenland & Robins 1985, eq. 13, written out with plain loops."""
+    """The variance of Greenland & Robins 1985 (formula from memory), written out with plain loops."""
     r = s = top = 0.0
     for (a, c), (b, d) in tables:
         n1, n0 = a + c, b + d
