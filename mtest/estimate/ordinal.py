@@ -153,7 +153,8 @@ def _logit_limits(estimate: float, se: float, df: float, level: float) -> tuple[
     """Return the limits computed on the logit and taken back."""
     centre = math.log(estimate / (1 - estimate))
     reach = float(stats.t.isf((1 - level) / 2, df)) * se / (estimate * (1 - estimate))
-    return tuple(0.5 * (1 + math.tanh((centre + step) / 2)) for step in (-reach, reach))
+    low, high = (0.5 * (1 + math.tanh((centre + step) / 2)) for step in (-reach, reach))
+    return low, high
 
 
 def _separated_limits(estimate: float, n_separate: int, level: float) -> tuple[float, float]:
