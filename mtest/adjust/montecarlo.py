@@ -48,7 +48,7 @@ def confidence_sequence(counts: np.ndarray, n: int, *, error: float = SEQUENCE_E
 def _bisect(function, left: np.ndarray, right: np.ndarray, *, rising: bool) -> np.ndarray:
     """Return where a monotone function crosses 0, on its outer side; the end of the range if it does not."""
     with np.errstate(divide="ignore"):  # log 0 at the ends is -inf, which is meant
-        for _ in range(100):
+        for _ in range(50):  # halvings: 1e-15, the resolution of a p-value
             middle = (left + right) / 2
             positive = function(middle) > 0
             move_right = positive == rising

@@ -11,7 +11,7 @@ from mtest.relabel.sets import ReferenceSet
 from mtest.relabel.sources import DrawnLabels, EnumeratedLabels
 
 CHUNK_ROWS = 256  # hypotheses computed together: their statistics for one batch of draws stay in the L2 cache
-L2_BYTES = 1 << 20  # working memory aimed at, half of a common L2 cache; measured in tests/bench
+L2_BYTES = 1 << 21  # working memory aimed at, a common L2 cache; measured in tests/bench
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -19,8 +19,9 @@ _BINS = 2000
 def tally_blocks(job: Job, thresholds: Thresholds, first: int, last: int) -> Tally:
     """Return the tallies of blocks first .. last - 1; a pure function of its arguments."""
     counter = Counter(thresholds)
+    reader = job.labels.reader()
     for block in range(first, last):
-        for chunks in _batches(job, block):
+        for chunks in _batches(job, reader, block):
             running: np.ndarray | None = None
             for rows, statistics in chunks:
                 if running is None:
@@ -40,8 +41,9 @@ def run_pilot(job: Job) -> np.ndarray:
     wanted = min(_PILOT_BLOCKS * BLOCK_DRAWS, max(_PILOT_VALUES // m, 64), job.labels.n_draws)
     pilot = np.empty((m, wanted))
     done = 0
+    reader = job.labels.reader()
     for block in range(_PILOT_BLOCKS):
-        for chunks in _batches(job, block, signed=True):
+        for chunks in _batches(job, reader, block, signed=True):
             if done >= wanted:
                 return pilot
             for rows, statistics in chunks:
@@ -72,36 +74,29 @@ def _span(reach: np.ndarray) -> tuple[float, float]:
     return reach.min() - 0.25 * width, reach.max() + 0.25 * width
 
 
-def _batches(job: Job, block: int, *, signed: bool = False):
+def _batches(job: Job, reader, block: int, *, signed: bool = False):
     """Yield a batch of draws at a time, as an iterator of (rows, statistics), the smallest observed ones first."""
     draws = min(BLOCK_DRAWS, job.labels.n_draws - block * BLOCK_DRAWS)
     if draws <= 0:
         return
-    source = job.labels.open_block(block)
+    reader.start(block)
     for start in range(0, draws, job.batch):
         size = min(job.batch, draws - start)
-        source.advance(size)
-        yield _chunks(job, source, size, signed=signed)
+        reader.advance(size)
+        yield _chunks(job, reader, size, signed=signed)
 
 
-def _chunks(job: Job, source, size: int, *, signed: bool):
-    # Labels are kept for all chunks of the batch; with a single chunk each set's labels are used at once, in cache.
+def _chunks(job: Job, reader, size: int, *, signed: bool):
+    # A set's labels are read once a batch; with a single chunk they are used at once, still in cache.
     labels: dict[int, list[np.ndarray]] = {}
     last = sum(job.chunk_rows)
     for panels, n_rows in zip(reversed(job.chunks), reversed(job.chunk_rows)):
         statistics = np.empty((n_rows, size))
         for panel in panels:
             if panel.set_index not in labels:
-                labels[panel.set_index] = _labels(job, source, panel.set_index, size)
+                labels[panel.set_index] = reader.fill(panel.set_index)
             statistics[panel.rows] = compute_statistics(panel, labels[panel.set_index])
         if job.two_sided and not signed:
             np.abs(statistics, out=statistics)
         yield slice(last - n_rows, last), statistics
         last -= n_rows
-
-
-def _labels(job: Job, source, set_index: int, size: int) -> list[np.ndarray]:
-    reference_set = job.labels.sets[set_index]
-    indicators = [np.empty((size, len(reference_set.subjects))) for _ in reference_set.arms[:-1]]
-    source.fill(set_index, indicators)
-    return indicators

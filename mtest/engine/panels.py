@@ -25,7 +25,8 @@ class Panel:
     stack : (row, subject) float64: scores, then their squares if needed, then availability patterns
     pattern : (hypothesis,) intp into the patterns, or None where complete
     sizes : (arm,) subjects per arm
-    coefficients : q, c0, c1, c2 of a complete pair; None where they vary with the labels
+    coefficients : c0, c2, mu of a complete pair, whose rows of the stack already carry the factors q and c1 (so that
+        T = (S - mu) / sqrt(c0 + S2 - c2 S^2)); None where the coefficients vary with the labels
     """
 
     set_index: int
@@ -40,7 +41,7 @@ class Panel:
     pattern: np.ndarray | None
     sizes: np.ndarray
     constants: Constants
-    coefficients: tuple[np.ndarray, ...] | None
+    coefficients: tuple[np.ndarray, np.ndarray, np.ndarray | None] | None
 
 
 def build_panel(
@@ -67,16 +68,17 @@ def build_panel(
     pattern = coefficients = None
     parts = [y]
     squares = statistic == "welch"
-    if present.all():
-        if is_pair:
-            q = np.broadcast_to(1 / sizes[0] + 1 / sizes[1], constants.h.shape)
-            coefficients = (q, *PAIR[statistic](sizes[0], sizes[1], constants))
-            # Equal arms without missing values: Welch's denominator no longer depends on the sum of squares.
-            squares = squares and bool(np.any(coefficients[2] != 0))
-        parts += [y**2] if squares else []
+    if present.all() and is_pair:
+        q = 1 / sizes[0] + 1 / sizes[1]
+        c0, c1, c2 = PAIR[statistic](sizes[0], sizes[1], constants)
+        # Equal arms without missing values: Welch's denominator no longer depends on the sum of squares.
+        squares = squares and bool(np.any(c1 != 0))
+        parts = [y * q, y**2 * c1] if squares else [y * q]
+        coefficients = (c0, c2 / q**2, constants.mu if np.any(constants.mu) else None)
     else:
-        patterns, pattern = np.unique(present, axis=0, return_inverse=True)
         parts += [y**2] if squares else []
+    if not present.all():
+        patterns, pattern = np.unique(present, axis=0, return_inverse=True)
         parts.append(patterns.astype(float))
     stack = np.concatenate(parts)
     return Panel(
@@ -121,28 +123,40 @@ def rounding_bound(panel: Panel, observed: np.ndarray, indicators: list[np.ndarr
 
 def _from_pair(panel: Panel, sums: np.ndarray) -> np.ndarray:
     """T = (S q - mu) / sqrt(c0 + c1 S2 - c2 S^2)."""
-    s = sums[: len(panel.rows)]
-    empty = None
     if panel.coefficients is not None:
-        q, c0, c1, c2 = panel.coefficients
-    else:
-        m_a, m_b, empty = _available(panel, [sums])
-        q = 1 / m_a + 1 / m_b
-        c0, c1, c2 = PAIR[panel.statistic](m_a, m_b, panel.constants)
-    den2 = _pair_denominator(panel, sums, c0, c1, c2)
-    numerator = s * q
-    numerator -= panel.constants.mu
-    result = divide(numerator, den2, floor=ZERO_SHARE * usual_size(panel.statistic, q, panel.constants))
-    if empty is not None:
-        result[empty] = 0.0
+        mu = panel.coefficients[2]
+        den2 = _complete_denominator(panel, sums)
+        numerator = sums[: len(panel.rows)]
+        if mu is not None:
+            numerator = numerator - mu
+        q = 1 / panel.sizes[0] + 1 / panel.sizes[1]
+        return divide(numerator, den2, floor=ZERO_SHARE * usual_size(panel.statistic, q, panel.constants))
+    m, s, _, empty = _arms(panel, [sums])
+    q = 1 / m[0] + 1 / m[1]
+    den2 = _varying_denominator(panel, sums, m)
+    floor = ZERO_SHARE * usual_size(panel.statistic, q, panel.constants)
+    result = divide(s[0] * q - panel.constants.mu, den2, floor=floor)
+    result[empty] = 0.0
     return result
 
 
-def _pair_denominator(panel: Panel, sums, c0, c1, c2) -> np.ndarray:
+def _complete_denominator(panel: Panel, sums: np.ndarray) -> np.ndarray:
+    """Return c0 + S2 - c2 S^2, the factors already in the stack."""
+    c0, c2, _ = panel.coefficients
     h = len(panel.rows)
-    den2 = sums[:h] * sums[:h]
+    den2 = np.square(sums[:h])
     den2 *= -c2
     den2 += c0
+    if panel.squares:
+        den2 += sums[h:]
+    return den2
+
+
+def _varying_denominator(panel: Panel, sums: np.ndarray, m: list[np.ndarray]) -> np.ndarray:
+    """Return c0 + c1 S2 - c2 S^2 where the numbers available vary with the labels."""
+    c0, c1, c2 = PAIR[panel.statistic](m[0], m[1], panel.constants)
+    h = len(panel.rows)
+    den2 = c0 - c2 * np.square(sums[:h])
     if panel.squares:
         den2 += c1 * sums[h : 2 * h]
     return den2
@@ -150,12 +164,11 @@ def _pair_denominator(panel: Panel, sums, c0, c1, c2) -> np.ndarray:
 
 def _denominators(panel: Panel, sums: list[np.ndarray]) -> np.ndarray:
     """Return den2 for the arm sums, (hypothesis, draw)."""
-    if panel.n_arms == 2:
-        if panel.coefficients is not None:
-            return _pair_denominator(panel, sums[0], *panel.coefficients[1:])
-        m_a, m_b, _ = _available(panel, sums)
-        return _pair_denominator(panel, sums[0], *PAIR[panel.statistic](m_a, m_b, panel.constants))
+    if panel.coefficients is not None:
+        return _complete_denominator(panel, sums[0])
     m, s, s2, _ = _arms(panel, sums)
+    if panel.n_arms == 2:
+        return _varying_denominator(panel, sums[0], m)
     return MANY[panel.statistic](panel.first, panel.second, s, s2, m, panel.constants)
 
 
@@ -183,9 +196,3 @@ def _arms(panel: Panel, sums: list[np.ndarray]):
     counts = [x[start:][panel.pattern] for x in everyone]
     empty = (counts[panel.first] < 0.5) | (counts[panel.second] < 0.5)
     return [np.maximum(count, 1.0) for count in counts], s, s2, empty
-
-
-def _available(panel: Panel, sums: list[np.ndarray]):
-    """Return m_a, m_b (at least 1) and where one of them is really 0."""
-    m, _, _, empty = _arms(panel, sums)
-    return m[0], m[1], empty

@@ -16,7 +16,7 @@ from pathlib import Path
 
 import joblib
 from joblib.externals.loky import get_reusable_executor
-from threadpoolctl import threadpool_limits
+from threadpoolctl import ThreadpoolController
 
 from mtest.engine.job import Job
 from mtest.engine.kernel import tally_blocks
@@ -66,15 +66,15 @@ def run_job(
     total = empty_tally(thresholds)
     workers = n_jobs or os.cpu_count() or 1
     first = 0
-    with threadpool_limits(1, user_api="blas"), tempfile.TemporaryDirectory(prefix="mtest-") as folder:
+    with _blas_libraries().limit(limits=1, user_api="blas"):
         for draws in rounds:
             last = -(-draws // BLOCK_DRAWS)
-            for tally in _run_blocks(job, thresholds, first, last, workers=workers, folder=folder):
+            for tally in _run_blocks(job, thresholds, first, last, workers=workers):
                 total.add(tally)
                 if report is not None:
                     report(Progress(done=total.n, planned=draws, tally=total, thresholds=thresholds))
             first = last
-            if settled(total):
+            if draws < rounds[-1] and settled(total):
                 break
     return total
 
@@ -94,7 +94,7 @@ def whole_blocks(draws: int) -> int:
     return -(-draws // BLOCK_DRAWS) * BLOCK_DRAWS
 
 
-def _run_blocks(job, thresholds, first: int, last: int, *, workers: int, folder: str) -> Iterator[Tally]:
+def _run_blocks(job, thresholds, first: int, last: int, *, workers: int) -> Iterator[Tally]:
     """Yield tallies that together cover the blocks first .. last - 1, in the order they are finished."""
     if first >= last:
         return
@@ -112,18 +112,24 @@ def _run_blocks(job, thresholds, first: int, last: int, *, workers: int, folder:
         tasks = (joblib.delayed(tally_blocks)(job, thresholds, begin, end) for begin, end in ranges)
         yield from joblib.Parallel(n_jobs=workers, prefer="threads", return_as="generator_unordered")(tasks)
         return
-    path = Path(folder) / "job.pickle"
-    if not path.exists():
+    with tempfile.TemporaryDirectory(prefix="mtest-") as folder:
+        path = Path(folder) / "job.pickle"
         joblib.dump((job, thresholds), path)
-    tasks = (joblib.delayed(_tally_from_file)(str(path), begin, end) for begin, end in ranges)
-    try:
-        yield from joblib.Parallel(
-            n_jobs=workers, backend="loky", inner_max_num_threads=1, return_as="generator_unordered"
-        )(tasks)
-    except BaseException:
-        # Ctrl-C or a failure: no worker may outlive the run.
-        get_reusable_executor().shutdown(wait=False, kill_workers=True)
-        raise
+        tasks = (joblib.delayed(_tally_from_file)(str(path), begin, end) for begin, end in ranges)
+        try:
+            yield from joblib.Parallel(
+                n_jobs=workers, backend="loky", inner_max_num_threads=1, return_as="generator_unordered"
+            )(tasks)
+        except BaseException:
+            # Ctrl-C or a failure: no worker may outlive the run.
+            get_reusable_executor().shutdown(wait=False, kill_workers=True)
+            raise
+
+
+@lru_cache(maxsize=1)
+def _blas_libraries() -> ThreadpoolController:
+    """Return a handle on the BLAS libraries; finding them takes milliseconds, so once."""
+    return ThreadpoolController()
 
 
 @lru_cache(maxsize=1)
@@ -133,5 +139,5 @@ def _load(path: str):
 
 def _tally_from_file(path: str, first: int, last: int) -> Tally:
     """Return the tally of some blocks of the job in a file: workers get ranges, the arrays are read once each."""
-    with threadpool_limits(1, user_api="blas"):
+    with _blas_libraries().limit(limits=1, user_api="blas"):
         return tally_blocks(*_load(path), first, last)

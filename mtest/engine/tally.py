@@ -116,11 +116,10 @@ class Counter:
 
 def _count_rows(statistics, count, near, counts: np.ndarray, near_counts: np.ndarray) -> None:
     """Add each row's number of draws at or above its two thresholds."""
-    reached = statistics >= count
-    numbers = np.array([np.count_nonzero(row) for row in reached])
+    numbers = np.sum(statistics >= count, axis=1)
     counts += numbers
     nearly = statistics >= near
     # Near ties are rare: one count over all rows mostly shows that there are none.
     if np.count_nonzero(nearly) != numbers.sum():
-        numbers = np.array([np.count_nonzero(row) for row in nearly])
+        numbers = np.sum(nearly, axis=1)
     near_counts += numbers

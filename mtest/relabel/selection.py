@@ -29,6 +29,7 @@ class Selector:
         self._set = reference_set
         self._seed = seed
         self._n = len(reference_set.subjects)
+        self._buffers: dict[str, np.ndarray] = {}
         self._one_cell = len(reference_set.sizes) == 1
         start = np.concatenate([[0], np.cumsum(reference_set.sizes.sum(axis=1))[:-1]])
         last = start[:, None] + np.cumsum(reference_set.sizes, axis=1)  # one past the last place of each arm
@@ -39,25 +40,39 @@ class Selector:
         self._high = (reference_set.cell.astype(np.uint64) + 1) << np.uint64(32)
         self._below = (np.arange(len(reference_set.sizes), dtype=np.uint64) + 1 << np.uint64(32)) - np.uint64(1)
 
-    def select(self, keys: np.ndarray, indicators: list[np.ndarray], *, block: int, first_draw: int) -> None:
-        """Write who is in each arm but the last.
+    def take(self, keys: np.ndarray) -> np.ndarray:
+        """Return the set's columns of (draw, subject of the study) keys, in a buffer of this selector's."""
+        out = self._buffer("keys", keys, np.uint32)
+        # mode="clip": "raise" would go through a copy; the columns are known to exist.
+        return np.take(keys, self._set.subjects, axis=1, out=out, mode="clip")
+
+    def select(self, keys: np.ndarray, *, block: int, first_draw: int) -> list[np.ndarray]:
+        """Return who is in each arm but the last: per arm, (draw, subject) 0/1 float64, in buffers of this selector's.
 
         Parameters
         ----------
         keys : (draw, subject) uint32
-        indicators : list over arms but the last of (draw, subject) float64, overwritten with 0 and 1
         block, first_draw : int
             Where the draws stand, for the address of fresh keys.
         """
-        ordered, values = self._sorted(keys)
+        values = (
+            keys if self._one_cell else np.bitwise_or(keys, self._high, out=self._buffer("values", keys, np.uint64))
+        )
+        ordered = self._buffer("ordered", keys, values.dtype)
+        ordered[:] = values
+        ordered.sort(axis=1)
+        indicators = [self._buffer(f"arm {k}", keys, np.float64) for k in range(len(self._borders))]
         tied = self._thresholds(ordered, values, indicators)
         for draw in np.flatnonzero(tied):
             self._resolve(indicators, draw=int(draw), block=block, first_draw=first_draw)
+        return indicators
 
-    def _sorted(self, keys: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-        """Return the keys in order and the keys as compared, with the cell in the high half if there are several."""
-        values = keys if self._one_cell else keys | self._high
-        return np.sort(values, axis=1), values
+    def _buffer(self, name: str, keys: np.ndarray, dtype) -> np.ndarray:
+        """Return a (draw, subject) array that is kept for the next batch; fresh memory would cost as much as the sort."""
+        kept = self._buffers.get(name)
+        if kept is None or len(kept) < len(keys):
+            kept = self._buffers[name] = np.empty((len(keys), self._n), dtype=dtype)
+        return kept[: len(keys)]
 
     def _thresholds(self, ordered, values, indicators) -> np.ndarray:
         """Write the indicators and return (draw,) bool, true where a border is tied."""
@@ -88,7 +103,8 @@ class Selector:
         for attempt in range(1000):
             address = (block, _FRESH, self._set.code, first_draw + draw, attempt)
             keys = KeyStream(self._seed, address, self._n).read(1)
+            values = keys if self._one_cell else keys | self._high
             rows = [indicator[draw : draw + 1] for indicator in indicators]
-            if not self._thresholds(*self._sorted(keys), rows).any():
+            if not self._thresholds(np.sort(values, axis=1), values, rows).any():
                 return
         raise AssertionError("a thousand tied draws in a row: the key stream is broken")

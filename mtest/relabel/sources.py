@@ -29,28 +29,32 @@ class DrawnLabels:
     share: np.ndarray
     n_draws: int
 
-    def open_block(self, block: int) -> _DrawnBlock:
-        """Return the block's labels, to be read in order."""
-        return _DrawnBlock(self, block)
+    def reader(self) -> DrawnReader:
+        """Return a reader of these labels, block by block."""
+        return DrawnReader(self)
 
 
-class _DrawnBlock:
-    def __init__(self, labels: DrawnLabels, block: int) -> None:
+class DrawnReader:
+    """Labels of one block after the other; its buffers are reused, so what it returns holds until the next batch."""
+
+    def __init__(self, labels: DrawnLabels) -> None:
         self._labels = labels
-        self._block = block
-        self._done = 0
-        self._shared = KeyStream(labels.seed, (block,), len(labels.share))
         self._selectors = [Selector(s, seed=labels.seed) for s in labels.sets]
         self._mixed = np.flatnonzero(labels.share < 1)
-        self._decisions = KeyStream(labels.seed, (block, _DECISIONS), len(self._mixed))
         # share < 1, so share * 2^32 fits; a key below it means: this draw uses the shared key.
         self._cut = np.floor(labels.share[self._mixed] * 2.0**32).astype(np.uint32)
-        self._own: list[tuple[np.ndarray, np.ndarray, KeyStream] | None] = []
-        for s in labels.sets:
-            inside = np.flatnonzero(np.isin(s.subjects, self._mixed))
-            place = np.searchsorted(self._mixed, s.subjects[inside])
-            stream = KeyStream(labels.seed, (block, s.code), len(inside))
-            self._own.append((inside, place, stream) if len(inside) else None)
+        self._inside = [np.flatnonzero(np.isin(s.subjects, self._mixed)) for s in labels.sets]
+        self._place = [np.searchsorted(self._mixed, s.subjects[i]) for s, i in zip(labels.sets, self._inside)]
+
+    def start(self, block: int) -> None:
+        """Go to the start of a block."""
+        seed, sets = self._labels.seed, self._labels.sets
+        self._block = block
+        self._done = 0
+        self._shared = KeyStream(seed, (block,), len(self._labels.share))
+        if len(self._mixed):
+            self._decisions = KeyStream(seed, (block, _DECISIONS), len(self._mixed))
+            self._own = [KeyStream(seed, (block, s.code), len(i)) for s, i in zip(sets, self._inside)]
 
     def advance(self, n_draws: int) -> None:
         """Read the keys of the next batch of draws."""
@@ -61,14 +65,17 @@ class _DrawnBlock:
         if len(self._mixed):
             self._use_shared = self._decisions.read(n_draws) < self._cut
 
-    def fill(self, index: int, indicators: list[np.ndarray]) -> None:
-        """Write the batch's labels of set `index`; once per set and batch, as a set's own keys are read on the way."""
-        keys = np.take(self._keys, self._labels.sets[index].subjects, axis=1)
-        own = self._own[index]
-        if own is not None:
-            inside, place, stream = own
-            keys[:, inside] = np.where(self._use_shared[:, place], keys[:, inside], stream.read(self._n))
-        self._selectors[index].select(keys, indicators, block=self._block, first_draw=self._first)
+    def fill(self, index: int) -> list[np.ndarray]:
+        """Return the batch's labels of set `index`: per arm but the last, (draw, subject) 0/1 float64.
+
+        To be called once per set and batch, as a set's own keys are read on the way.
+        """
+        selector, inside = self._selectors[index], self._inside[index]
+        keys = selector.take(self._keys)
+        if len(inside):
+            use_shared = self._use_shared[:, self._place[index]]
+            keys[:, inside] = np.where(use_shared, keys[:, inside], self._own[index].read(self._n))
+        return selector.select(keys, block=self._block, first_draw=self._first)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,24 +88,30 @@ class EnumeratedLabels:
     def n_draws(self) -> int:
         return count_relabellings(self.sets[0].sizes)
 
-    def open_block(self, block: int) -> _EnumeratedBlock:
-        """Return the block's labels, to be read in order."""
-        return _EnumeratedBlock(self.sets[0], block * BLOCK_DRAWS)
+    def reader(self) -> EnumeratedReader:
+        """Return a reader of these labels, block by block."""
+        return EnumeratedReader(self.sets[0])
 
 
-class _EnumeratedBlock:
-    def __init__(self, reference_set: ReferenceSet, first: int) -> None:
+class EnumeratedReader:
+    """Relabellings of one set, a range of ranks at a time."""
+
+    def __init__(self, reference_set: ReferenceSet) -> None:
         self._set = reference_set
-        self._next = first
+
+    def start(self, block: int) -> None:
+        """Go to the start of a block."""
+        self._next = block * BLOCK_DRAWS
 
     def advance(self, n_draws: int) -> None:
         """Move on to the next batch of relabellings."""
         self._rank = np.arange(self._next, self._next + n_draws, dtype=np.int64)
         self._next += n_draws
 
-    def fill(self, index: int, indicators: list[np.ndarray]) -> None:
-        """Write the batch's labels: the rank is a mixed-radix number with a digit per cell and arm but the last."""
-        rank = self._rank.copy()
+    def fill(self, index: int) -> list[np.ndarray]:
+        """Return the batch's labels: the rank is a mixed-radix number with a digit per cell and arm but the last."""
+        rank = self._rank
+        indicators = [np.empty((len(rank), len(self._set.subjects))) for _ in self._set.arms[:-1]]
         for cell, counts in enumerate(self._set.sizes):
             members = np.flatnonzero(self._set.cell == cell)
             free = np.ones((len(rank), len(members)), dtype=bool)
@@ -110,6 +123,7 @@ class _EnumeratedBlock:
                 indicator[:, members] = chosen
                 free &= ~chosen
                 left -= size
+        return indicators
 
 
 def _choose(digit: np.ndarray, free: np.ndarray, left: int, size: int) -> np.ndarray:
