@@ -1,0 +1,142 @@
+"""Fixed words of the report: what each procedure, scheme and rule is called, the glossary and the cautions."""
+
+from __future__ import annotations
+
+ERROR_RATE: dict[str, str] = {
+    "Benjamini-Hochberg": "false discovery rate",
+    "Benjamini-Yekutieli": "false discovery rate",
+    "none": "",
+}  # every other procedure aims at the familywise error rate
+
+PROCEDURES: dict[str, tuple[str, str]] = {
+    "step-down max-T": ("the step-down max-T procedure", "Westfall & Young 1993"),
+    "single-step max-T": ("the single-step max-T procedure", "Westfall & Young 1993"),
+    "Bonferroni": ("the Bonferroni procedure", "Dunn 1961"),
+    "Sidak": ("the Šidák procedure", "Šidák 1967"),
+    "Holm": ("Holm's step-down procedure", "Holm 1979"),
+    "Holm-Sidak": ("Holm's step-down procedure with Šidák levels", "Holm 1979; Šidák 1967"),
+    "Hochberg": ("Hochberg's step-up procedure", "Hochberg 1988"),
+    "Hommel": ("Hommel's procedure", "Hommel 1988"),
+    "Benjamini-Hochberg": ("the Benjamini-Hochberg procedure", "Benjamini & Hochberg 1995"),
+    "Benjamini-Yekutieli": ("the Benjamini-Yekutieli procedure", "Benjamini & Yekutieli 2001"),
+    "none": ("no adjustment", ""),
+}
+
+SCHEMES: dict[str, str] = {
+    "complete": "complete randomisation: labels are exchanged among all subjects, with the arm sizes as they were",
+    "stratified": "stratified randomisation: labels are exchanged within strata only, as randomised",
+    "blocks": "randomisation in blocks: labels are exchanged within blocks only",
+    "matched sets": "randomisation within matched sets: labels are exchanged within sets only",
+}
+
+EXCHANGE: dict[str, str] = {
+    "within-pair": "For a comparison of two arms only the subjects of those two arms exchange their labels; the data "
+    "of other arms never enter it.",
+    "all-arms": "All arms exchange their labels together; for a comparison of two arms this is exact only where no arm "
+    "differs from any other.",
+}
+
+ACROSS_PAIRS: dict[str, str] = {
+    "joint": "One random key for each subject drives every comparison at once, so comparisons that share an arm move "
+    "together as they do in the study.",
+    "boole": "Comparisons are combined by Boole's inequality, step by step, each with its own relabellings; this holds "
+    "whatever the dependence between them.",
+}
+
+STATISTICS: dict[str, str] = {
+    "welch": "Welch's t: the difference in means over its unpooled standard error",
+    "pooled": "Student's t: the difference in means over its pooled standard error",
+    "difference": "the difference in means over its standard deviation under relabelling",
+    "unscaled difference": "the difference in means as it is",
+    "rank": "the standardised rank sum, on midranks within stratum (Wilcoxon; van Elteren with strata)",
+    "score": "the score z for two proportions, with the pooled variance",
+}
+
+MISSING_RULES: dict[str, str] = {
+    "available": "the subject's outcome stays missing and travels with the subject when labels are exchanged",
+    "worst-score": "a missing outcome is ranked below the worst that was observed",
+}
+
+GLOSSARY: dict[str, tuple[str, str]] = {
+    "comparison": ("Comparison", "The arm under test against its reference arm."),
+    "n": (
+        "n (missing)",
+        "Subjects analysed in the arm, and in brackets those randomised to it who are not analysed for this endpoint.",
+    ),
+    "estimate": (
+        "Estimate",
+        "The size of the difference, arm less reference, in the measure named under the endpoint. P(better) is the "
+        "chance that a subject of the arm does better than one of the reference, ties counted half.",
+    ),
+    "interval": (
+        "Interval",
+        "The textbook confidence interval of the estimate. It stands for one hypothesis alone, is not simultaneous, "
+        "and may therefore disagree with the adjusted p.",
+    ),
+    "p-unadjusted": (
+        "p, unadjusted",
+        "The share of relabellings whose statistic is at least as extreme as the observed one, for this hypothesis "
+        "alone.",
+    ),
+    "p-model": ("p, model", "The p-value of the textbook test of the same hypothesis, for comparison."),
+    "p-holm": ("p, Holm", "The unadjusted p after Holm's adjustment, which uses no correlation between hypotheses."),
+    "p-adjusted": (
+        "p, adjusted",
+        "The p-value by the family's own procedure, fixed in the plan. It decides: the hypothesis is rejected where it "
+        "is at or below the family's level.",
+    ),
+    "monte-carlo": (
+        "Monte Carlo interval",
+        "Where the adjusted p would lie if every relabelling were enumerated: a confidence sequence, which stays valid "
+        "however the number of draws was chosen. “exact” where all were enumerated.",
+    ),
+    "step": (
+        "Step",
+        "The hypothesis's place in the order in which the procedure considered them; 1 is the first.",
+    ),
+    "decision": ("Decision", "Rejected or not rejected at the family's level, taken on unrounded values."),
+    "maximum": (
+        "Maximum (max-T)",
+        "The largest statistic in the family under one relabelling. Its distribution shows what the best-looking of "
+        "all hypotheses reaches when no arm does anything.",
+    ),
+    "equivalent": (
+        "Equivalent number of independent endpoints",
+        "The number of independent hypotheses that would need the same critical value: log(1 − alpha) / "
+        "log(1 − local alpha).",
+    ),
+    "filled": ("Filled", "Subjects analysed whose missing outcome was replaced by the endpoint's rule."),
+}
+
+CAUTIONS: tuple[str, ...] = (
+    "The method has to be fixed before unblinding. Results of a method chosen after the data were seen do not have the "
+    "error rate stated here.",
+    "Regulators usually meet re-randomisation tests as sensitivity analyses. Agree a primary use with the authority "
+    "first.",
+    "The intervals shown are textbook intervals of single hypotheses. They are not simultaneous and are not made by "
+    "relabelling, so an interval may exclude the null where the adjusted p does not reject, and the other way round.",
+    "A hypothesis that is not rejected has not been shown to be true.",
+    "These results support, and do not replace, the judgement of a qualified statistician and the rules that apply "
+    "locally.",
+)
+
+REFERENCES: tuple[str, ...] = (
+    "Phipson B, Smyth GK (2010). Permutation p-values should never be zero: calculating exact p-values when "
+    "permutations are randomly drawn. Statistical Applications in Genetics and Molecular Biology 9(1), article 39.",
+    "Robbins H (1970). Statistical methods related to the law of the iterated logarithm. Annals of Mathematical "
+    "Statistics 41, 1397–1409.",
+    "Troendle JF, Westfall PH (2011). Permutational multiple testing adjustments with multivariate multiple group "
+    "data. Journal of Statistical Planning and Inference 141, 2021–2029.",
+    "Westfall PH, Young SS (1993). Resampling-Based Multiple Testing: Examples and Methods for p-Value Adjustment. "
+    "New York: Wiley.",
+)
+
+
+def procedure_in_words(procedure: str) -> str:
+    """Return the procedure's name as it stands in a sentence."""
+    return PROCEDURES.get(procedure, (procedure, ""))[0]
+
+
+def sidedness(alternative: str) -> str:
+    """Return the alternative in words."""
+    return "one-sided, in favour of the tested arm" if alternative == "better" else "two-sided"

@@ -1,0 +1,141 @@
+"""The display facts say what the numbers say."""
+
+import math
+from dataclasses import replace
+
+import pytest
+
+from mtest.report import facts as f
+from mtest.report.method import describe_method, describe_run
+from mtest.report.wording import ERROR_RATE, PROCEDURES
+
+
+def _with_procedure(result, procedure):
+    return replace(result, families=(replace(result.families[0], procedure=procedure),))
+
+
+def test_answer_counts_the_rejected_and_names_rate_level_and_sides(four_arms):
+    rejected = [h for h in four_arms.families[0].hypotheses if h.rejected]
+    answer = f.gather_facts(four_arms).families[0].answer
+    assert 1 < len(rejected) < 42
+    assert answer[0] == (
+        f"{len(rejected)} of 42 hypotheses are rejected at a familywise error rate of 5\u00a0%, two-sided, "
+        "by the step-down max-T procedure."
+    )
+
+
+def test_answer_tells_a_rejection_against_the_tested_arm_from_one_in_its_favour(four_arms):
+    family = f.gather_facts(four_arms).families[0]
+    harmed = [h for h in family.hypotheses if h.raw.rejected and h.direction == "worse"]
+    assert [h.raw.endpoint for h in harmed] == ["Skin reaction at the site"]
+    assert family.answer[1].endswith("and 1 with the tested arm worse.")
+
+
+def test_answer_says_none_where_nothing_is_rejected(four_arms):
+    family = four_arms.families[0]
+    none = replace(family, hypotheses=tuple(replace(h, rejected=False) for h in family.hypotheses))
+    answer = f.gather_facts(replace(four_arms, families=(none,))).families[0].answer
+    assert len(answer) == 1
+    assert answer[0].startswith("None of 42 hypotheses is rejected")
+
+
+@pytest.mark.parametrize("procedure", ["Benjamini-Hochberg", "Benjamini-Yekutieli"])
+def test_a_false_discovery_rate_is_not_called_familywise(four_arms, procedure):
+    answer = f.gather_facts(_with_procedure(four_arms, procedure)).families[0].answer[0]
+    assert "false discovery rate of 5\u00a0%" in answer
+    assert "familywise" not in answer
+
+
+def test_without_a_procedure_nothing_is_called_rejected_or_significant(four_arms):
+    family = f.gather_facts(_with_procedure(four_arms, "none")).families[0]
+    assert "No error rate is controlled" in family.answer[0]
+    assert {h.decision for h in family.hypotheses} == {"nominal", "–"}
+
+
+def test_every_procedure_of_the_plan_has_words():
+    from typing import get_args
+
+    from mtest.plan.records import Procedure
+
+    assert set(get_args(Procedure)) == set(PROCEDURES)
+    assert set(ERROR_RATE) < set(PROCEDURES)
+
+
+def test_an_unsettled_decision_is_named_with_its_interval(two_families):
+    (sentence,) = f.gather_facts(two_families).families[0].unsettled
+    assert sentence.startswith("Pain on movement, change to week 12, 2 % v vehicle: the adjusted p is 0.0495")
+    assert "(0.047 to 0.053)" in sentence
+
+
+def test_status_counts_what_is_not_settled_and_the_warnings(two_families, four_arms):
+    assert f.gather_facts(two_families).status.endswith("1 decision NOT settled; 3 warnings.")
+    assert f.gather_facts(four_arms).status.endswith("every decision settled; no warnings.")
+
+
+@pytest.mark.parametrize(
+    ("measure", "null", "estimate", "better", "direction"),
+    [
+        ("mean difference", 0.0, -2.0, "lower", "better"),
+        ("mean difference", 0.0, -2.0, "higher", "worse"),
+        ("P(better)", 0.5, 0.6, "lower", "better"),
+        ("P(better)", 0.5, 0.4, "higher", "worse"),
+        ("risk ratio", 1.0, 0.8, "higher", "worse"),
+        ("mean difference", 0.0, 0.0, "higher", ""),
+    ],
+)
+def test_direction_follows_the_measure_and_what_is_better(four_arms, measure, null, estimate, better, direction):
+    h = four_arms.families[0].hypotheses[0]
+    h = replace(h, better=better, effect=replace(h.effect, measure=measure, null=null, estimate=estimate))
+    assert f.direction_of(h) == direction
+
+
+def test_direction_falls_back_on_the_means_where_there_is_no_estimate(four_arms):
+    h = four_arms.families[0].hypotheses[0]
+    h = replace(h, better="higher", mean_arm=1.0, mean_reference=2.0, effect=replace(h.effect, estimate=math.nan))
+    assert f.direction_of(h) == "worse"
+    assert f.direction_of(replace(h, mean_arm=math.nan)) == ""
+
+
+def test_risk_differences_are_shown_in_percentage_points(four_arms):
+    h = next(h for h in f.gather_facts(four_arms).families[0].hypotheses if h.raw.kind == "binary")
+    assert h.measure == "risk difference, percentage points"
+    assert float(h.estimate) == pytest.approx(100 * h.raw.effect.estimate, abs=0.05)
+
+
+def test_an_estimate_has_two_significant_digits_of_its_standard_error(four_arms):
+    effect = four_arms.families[0].hypotheses[0].effect
+    shown = replace(effect, estimate=1.23456, se=0.0472, low=1.1, high=1.3)
+    assert f.effect_in_words(shown) == ("1.235", "1.100 to 1.300")
+
+
+def test_enumerated_p_are_called_exact(two_families):
+    assert {h.monte_carlo for h in f.gather_facts(two_families).families[1].hypotheses} == {"exact"}
+
+
+def test_saving_is_told_only_where_it_is_offered(two_families):
+    first, second = f.gather_facts(two_families).families
+    assert f"{first.raw.equivalent_endpoints:.1f} independent ones" in first.saving
+    assert second.saving == ""
+
+
+def test_method_gives_both_p_value_formulas_where_both_were_used(two_families, four_arms):
+    both = " ".join(dict(describe_method(f.gather_facts(two_families)))["Counting"])
+    assert "p = (1 + S) / (1 + B)" in both
+    assert "p = S / |G|" in both
+    assert "|G|" not in " ".join(dict(describe_method(f.gather_facts(four_arms)))["Counting"])
+
+
+def test_method_states_seed_generator_draws_and_relabellings_of_the_run(invented, four_arms):
+    facts = f.gather_facts(replace(four_arms, run=replace(four_arms.run, seed=98_765, generator="Other bits")))
+    entries = dict(describe_method(facts))
+    assert "seed 98765 with the generator Other bits" in " ".join(entries["Counting"])
+    assert "Draws: 20,000." in " ".join(entries["Family “secondary”"])
+    assert "1 %, vehicle: " in " ".join(entries["Family “secondary”"])
+
+
+def test_reproduction_holds_every_hash_but_no_date(four_arms):
+    text = str(describe_run(f.gather_facts(four_arms)))
+    run = four_arms.run
+    assert run.plan_sha256 in text
+    assert all(digest in text for _, digest in run.data_sha256)
+    assert run.finished_utc not in text
