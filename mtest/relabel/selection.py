@@ -68,7 +68,7 @@ class Selector:
         return indicators
 
     def _buffer(self, name: str, keys: np.ndarray, dtype) -> np.ndarray:
-        """Return a (draw, subject) array that is kept for the next batch; fresh memory would cost as much as the sort."""
+        """Return a (draw, subject) array that is kept for the next batch: fresh memory costs as much as sorting."""
         kept = self._buffers.get(name)
         if kept is None or len(kept) < len(keys):
             kept = self._buffers[name] = np.empty((len(keys), self._n), dtype=dtype)

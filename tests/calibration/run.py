@@ -18,7 +18,7 @@ def main(studies: int, path: Path) -> None:
     lines = [
         "# Familywise error of step-down max-T",
         "",
-        f"{studies:,} simulated studies per cell, {DRAWS:,} draws each, Welch's statistic, nominal {ALPHA}; seed {SEED}. "
+        f"{studies:,} simulated studies per cell, {DRAWS:,} draws each, Welch, nominal {ALPHA}; seed {SEED}. "
         f"A rate above {limit:.4f} (the 99.9 % binomial limit at the nominal level) is marked !. Error: any true "
         "hypothesis rejected; a pair of arms of unequal spread is not a true hypothesis. "
         f"Made by tests/calibration/run.py.",
