@@ -34,6 +34,8 @@ RULES: dict[str, Callable[[dict[str, Any]], str]] = {
     "model_type": lambda ctx: "must be a table of keys and values",
     "model_attributes_type": lambda ctx: "must be a table of keys and values",
 }
+# Both ends in one sentence, which also serves for nan.
+LEVEL_RULE = "must lie between 0 and 1, neither included"
 FALLBACK = "is not of the form that a plan takes here"
 
 # Where a field takes more than one form, the checker reports each form it tried; the author gets one sentence.
@@ -44,8 +46,10 @@ SEVERAL_FORMS: dict[tuple[str, str], tuple[str, tuple[str, ...]]] = {
         ("each vs reference", "all pairs"),
     ),
     ("endpoint", "event"): ("must be text, a number, true or false", ()),
-    ("analysis_set", "where"): ("must give each column one value: text, a number, true or false", ()),
+    ("analysis_set", "where"): ("must name at least one column and the value it holds, as in { kept = 'Y' }", ()),
 }
+VALUE_FORM = "must be a column's name in quotation marks, or a table { parameter = ..., visit = ..., column = ... }"
+ONE_VALUE = "must be text, a number, true or false"
 
 Location = tuple[str | int, ...]
 
@@ -62,7 +66,9 @@ def sentences(errors: list[ErrorDetails], data: dict[str, Any]) -> list[str]:
     """
     found: dict[Location, str] = {}
     for error in errors:
-        place = _existing(error["loc"], data) if error["type"] != "missing" else error["loc"]
+        place = _existing(error["loc"], data)
+        if error["type"] == "missing" and place == error["loc"][:-1]:
+            place = error["loc"]  # the key that should be there
         if error["type"] == "too_short" and len(_at(place, data) or ()) >= error["ctx"]["min_length"]:
             continue  # the checker counts only the sound items; the others have faults of their own
         # Of several findings at one place the first is kept: they are the forms tried of one field.
@@ -71,21 +77,29 @@ def sentences(errors: list[ErrorDetails], data: dict[str, Any]) -> list[str]:
 
 
 def _sentence(error: ErrorDetails, place: Location, data: dict[str, Any]) -> str:
-    if error["type"] == "missing":
+    if error["type"] == "missing" and place == error["loc"]:
         return _missing(place, data)
     if error["type"] == "extra_forbidden":
         return _unknown_key(place, data)
     where, got = path(place, data), _at(place, data)
-    section = _written(place)
-    if error["type"] == "tuple_type" and isinstance(got, dict):
-        return f"{where} must be a list of tables; got one table. Write [[{section}]] instead of [{section}]."
-    if error["type"] in ("model_type", "model_attributes_type") and isinstance(got, tuple):
-        return f"{where} must be one table; got {shown(got)}. Write [{section}] instead of [[{section}]], once."
+    if place[0] == "endpoint" and place[2:] == ("value",):
+        return f"{where} {VALUE_FORM}; got {shown(got)}."
+    if error["type"] == "tuple_type" and isinstance(got, dict) and _first_record(_annotation(place)):
+        return (
+            f"{where} must be a list of tables; got one table. Write [[{_written(place)}]] instead of "
+            f"[{_written(place)}]."
+        )
+    if error["type"] in ("model_type", "model_attributes_type") and isinstance(got, tuple) and len(place) == 1:
+        return f"{where} must be one table; got {shown(got)}. Write [{place[0]}] instead of [[{place[0]}]], once."
     form = SEVERAL_FORMS.get((str(place[0]), str(place[2]))) if len(place) > 2 else None
+    if form is not None and len(place) > 3:
+        return f"{where} {ONE_VALUE}; got {shown(got)}."
     if form is not None:
         return f"{where} {form[0]}; got {shown(got)}.{nearest(got, form[1], cutoff=ENUM_CUTOFF)}"
     context = error.get("ctx", {})
     rule = RULES[error["type"]](context) if error["type"] in RULES else FALLBACK
+    if place[-1] == "alpha" and error["type"] in ("greater_than", "less_than"):
+        rule = LEVEL_RULE
     choices = re.findall(r"'([^']*)'", str(context.get("expected", "")))
     return f"{where} {rule}; got {shown(got)}.{nearest(got, choices, cutoff=ENUM_CUTOFF)}"
 
@@ -131,7 +145,8 @@ def _existing(place: Location, data: dict[str, Any]) -> Location:
         if here is None:
             return place[:count]
         if (str(place[0]), str(step)) in SEVERAL_FORMS and count == 2:
-            return place[: count + 1]
+            named = isinstance(here, dict) and len(place) > 3 and place[3] in here
+            return place[: 4 if named else 3]
     return place
 
 

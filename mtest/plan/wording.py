@@ -11,13 +11,13 @@ SHOWN_LENGTH = 60  # characters of a wrong value that are shown; enough to recog
 def shown(value: object) -> str:
     """Return a value as the plan's author would write it, cut to `SHOWN_LENGTH`.
 
-    >>> shown("down"), shown(True), shown((1, "a")), shown({})
+    >>> shown("down"), shown(True), shown((1, "a")), shown({"a": 1})
     ("'down'", 'true', "[1, 'a']", 'a table')
     """
     if isinstance(value, bool):
         return "true" if value else "false"
     if isinstance(value, dict):
-        return "a table"
+        return "a table" if value else "an empty table"
     if isinstance(value, (list, tuple)):
         if value and all(isinstance(item, dict) for item in value):
             return f"a list of {len(value)} table{'s' if len(value) > 1 else ''}"

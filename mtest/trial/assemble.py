@@ -135,12 +135,12 @@ def _observed(
         data, rows = found
         table, position = data.table, data.position[rows]
     else:
-        table, position, rows = subjects, np.arange(n_subjects), np.ones(n_subjects, bool)
+        table, position, rows = subjects, np.arange(n_subjects), np.arange(n_subjects)
     cells = table.column(endpoint.value.column, faults, purpose=where)
     if cells is None:
         return None
     values = np.full(n_subjects, np.nan)
-    values[position] = as_numbers(cells[rows], endpoint, table, faults, where=where)
+    values[position] = as_numbers(cells.iloc[rows], endpoint, table, faults, where=where)
     return values
 
 

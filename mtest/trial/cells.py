@@ -57,5 +57,10 @@ def equal_to(
 
 
 def wrong(cells: pd.Series) -> str:
-    """Return the distinct values of wrong cells, as a sentence shows them."""
-    return listed(list(dict.fromkeys(cells)), last="and", most=WRONG_SHOWN)
+    """Return the distinct values of wrong cells, in the order of the file, as a sentence shows them."""
+    return listed(distinct(cells), last="and", most=WRONG_SHOWN)
+
+
+def distinct(cells: pd.Series) -> list[str]:
+    """Return the different values of cells, in the order of the file."""
+    return list(dict.fromkeys(cells.sort_index()))

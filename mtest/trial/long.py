@@ -18,6 +18,7 @@ class LongData:
 
     who : (row,) text, the subject's identifier
     position : (row,) intp, the subject's place among the randomised, -1 where unknown
+    rows_at : (parameter, visit) -> places of its rows in the table, so that many endpoints need one search
     """
 
     table: Table
@@ -25,6 +26,7 @@ class LongData:
     position: np.ndarray
     parameter: pd.Series
     visit: pd.Series
+    rows_at: dict[tuple[str, str], np.ndarray]
 
 
 def keyed(table: Table, spec: LongTable, *, subject: str, ids: tuple[str, ...], faults: list[str]) -> LongData | None:
@@ -55,13 +57,14 @@ def keyed(table: Table, spec: LongTable, *, subject: str, ids: tuple[str, ...], 
             f"{', '.join(shown(name) for name in names[:ROWS_SHOWN])}{more}."
             f"{hint or ' Add them to the subject table, or remove their rows.'}"
         )
-    return LongData(table=table, who=who, position=position, parameter=parameter, visit=visit)
+    rows_at = pd.DataFrame({"parameter": parameter, "visit": visit}).groupby(["parameter", "visit"], sort=False).indices
+    return LongData(table=table, who=who, position=position, parameter=parameter, visit=visit, rows_at=rows_at)
 
 
 def chosen_rows(
     endpoint: Endpoint, tables: tuple[LongData, ...], faults: list[str], *, where: str, all_read: bool
 ) -> tuple[LongData, np.ndarray] | None:
-    """Return the long table that holds an endpoint, and (row,) bool: its rows; None where that is not one table.
+    """Return the long table that holds an endpoint, and the places of its rows; None where that is not one table.
 
     Parameters
     ----------
@@ -71,11 +74,7 @@ def chosen_rows(
         Whether every long table could be read; if not, an absent parameter is no fault yet.
     """
     parameter, visit = endpoint.value.parameter, endpoint.value.visit
-    found = [
-        (data, rows)
-        for data in tables
-        if (rows := ((data.parameter == parameter) & (data.visit == visit)).to_numpy()).any()
-    ]
+    found = [(data, data.rows_at[parameter, visit]) for data in tables if (parameter, visit) in data.rows_at]
     if len(found) > 1:
         names = " and ".join(data.table.name for data, _ in found)
         faults.append(

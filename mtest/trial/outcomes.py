@@ -10,7 +10,7 @@ import pandas as pd
 from mtest.plan.records import DEFAULT_STATISTIC, Endpoint
 from mtest.plan.wording import listed, nearest, shown
 from mtest.trial.arrays import EndpointData
-from mtest.trial.cells import equal_to, is_missing, numbers, wrong
+from mtest.trial.cells import NUMBER, distinct, equal_to, is_missing, numbers, wrong
 from mtest.trial.sources import MISSING_TOKENS, Table
 
 
@@ -71,7 +71,7 @@ def _ordinal(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[st
     rank = {level: float(place) for place, level in enumerate(endpoint.levels)}
     values = np.array([rank.get(cell, np.nan) for cell in cells])
     unknown = np.isnan(values) & ~is_missing(cells)
-    for label in dict.fromkeys(cells[unknown]):
+    for label in distinct(cells[unknown]):
         rows = table.rows(cells.index[cells == label])
         hint = nearest(label, endpoint.levels) or " Correct the cell, or add the level."
         faults.append(
@@ -92,14 +92,25 @@ def _binary(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str
                 f"0 or 1 ({where}); got {wrong(cells[odd])}. Correct the cell, or name the event in the plan."
             )
         return values
-    distinct = list(dict.fromkeys(cells[~missing]))
-    if len(distinct) > 2:
-        faults.append(
-            f"{table.name}: column {shown(cells.name)} must hold at most two different values ({where}); "
-            f"got {listed(distinct, last='and', most=5)}. Make them one word for the event and one for no event."
-        )
     event = equal_to(cells, endpoint.event, table, faults, purpose=where)
+    others = distinct(cells[~missing & ~event])
+    if len(_different(others, endpoint.event)) > 1:
+        hint = nearest(endpoint.event, others) or " Write one word for no event, or correct the event in the plan."
+        faults.append(
+            f"{table.name}: column {shown(cells.name)} must hold the event {shown(endpoint.event)} and at most one "
+            "other "
+            f"value ({where}); got {listed(others, last='and', most=5)} beside it.{hint}"
+        )
     return np.where(missing, np.nan, event.astype(float))
+
+
+def _different(others: list[str], event: str | int | float | bool) -> set[str] | set[float]:
+    """Return the different values among cells that are not the event, told apart as the event is recognised."""
+    if isinstance(event, bool):
+        return {cell.lower() for cell in others}
+    if isinstance(event, str):
+        return set(others)
+    return {float(cell) for cell in others if NUMBER.fullmatch(cell)}  # what is no number has a fault of its own
 
 
 Converter = Callable[[pd.Series, Endpoint, Table, list[str], str], np.ndarray]

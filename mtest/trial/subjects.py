@@ -9,7 +9,7 @@ import pandas as pd
 
 from mtest.plan.records import Plan, Randomisation
 from mtest.plan.wording import item, listed, nearest, shown
-from mtest.trial.cells import equal_to
+from mtest.trial.cells import distinct, equal_to
 from mtest.trial.sources import Table
 
 MIN_PER_ARM = 2  # a spread within an arm cannot be seen in one subject
@@ -38,7 +38,7 @@ def by_identifier(table: Table, column: str, faults: list[str]) -> Table | None:
             "cell. Fill it in, or remove the row."
         )
     twice = (ids.duplicated(keep=False) & (ids != "")).to_numpy()
-    for subject in list(dict.fromkeys(ids[twice])):
+    for subject in distinct(ids[twice]):
         faults.append(
             f"{table.name}, {table.rows(ids.index[ids == subject])}: each subject must have one row; got subject "
             f"{shown(subject)} {int((ids == subject).sum())} times. Remove the others, or put visits into a "
@@ -54,7 +54,7 @@ def arm_index(subjects: Table, randomisation: Randomisation, faults: list[str]) 
     if cells is None:
         return None
     index = pd.Index(arms).get_indexer(pd.Index(cells))
-    for label in dict.fromkeys(cells[index < 0]):
+    for label in distinct(cells[index < 0]):
         where = subjects.rows(cells.index[cells == label])
         hint = nearest(label, arms) or " Correct the cell, or add the arm to randomisation.arms."
         faults.append(
