@@ -158,11 +158,10 @@ def judge_family(
 
 
 def _reference_sets(design: Design, spec: FamilySpec) -> tuple[ReferenceSet, ...]:
-    n_arms = len(design.arms)
     if spec.exchange == "all-arms":
-        return (whole_set(design.arm, design.cell, n_arms=n_arms, name="all arms"),)
+        return (whole_set(design.arm, design.cell, n_arms=len(design.arms), name="all arms"),)
     return tuple(
-        pair_set(design.arm, design.cell, pair, n_arms=n_arms, name=f"{design.arms[pair[0]]} vs {design.arms[pair[1]]}")
+        pair_set(design.arm, design.cell, pair, name=f"{design.arms[pair[0]]} vs {design.arms[pair[1]]}")
         for pair in spec.pairs
     )
 

@@ -81,7 +81,7 @@ class Draws(Record):
 
 
 class Value(Record):
-    """Where an endpoint's values stand: a column, of the subject table or at one parameter and visit of a long table."""
+    """Where an endpoint's values stand: a column of the subject table, or of a long table at a parameter and visit."""
 
     column: Name
     parameter: str = ""
@@ -98,7 +98,7 @@ class Endpoint(Record):
     statistic: StatisticName | None = None  # None: the default of the kind
     missing: MissingRule = "available"
     levels: tuple[Name, ...] = ()  # ordinal text values, from lowest to highest
-    event: str | int | float | bool | None = None  # the binary value that counts as 1; None: the data are 0 and 1
+    event: str | int | float | bool | None = None  # the binary value that counts as 1; None: data are 0 and 1
     unit: str = ""
     group: str = ""  # endpoints of one group share a panel in the figures
 
@@ -115,7 +115,9 @@ class Family(Record):
 
     name: Name
     endpoints: Literal["all"] | Annotated[tuple[Name, ...], Field(min_length=1)]
-    comparisons: Literal["each vs reference", "all pairs"] | Annotated[tuple[tuple[Name, Name], ...], Field(min_length=1)]
+    comparisons: (
+        Literal["each vs reference", "all pairs"] | Annotated[tuple[tuple[Name, Name], ...], Field(min_length=1)]
+    )
     procedure: Procedure = "step-down max-T"
     alternative: Literal["two-sided", "better"] = "two-sided"
     alpha: Level | None = None  # None: the study's; a one-sided family must state its own

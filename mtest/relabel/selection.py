@@ -12,7 +12,7 @@ import numpy as np
 from mtest.relabel.keys import KeyStream
 from mtest.relabel.sets import ReferenceSet
 
-_FRESH = 7  # the branch of a block's address under which fresh keys are drawn
+_FRESH = 1  # the branch of a block's address under which fresh keys are drawn; longer than any other address
 
 
 class Selector:
@@ -101,7 +101,7 @@ class Selector:
     def _resolve(self, indicators, *, draw: int, block: int, first_draw: int) -> None:
         """Draw fresh keys for one draw of this set until no border is tied."""
         for attempt in range(1000):
-            address = (block, _FRESH, self._set.code, first_draw + draw, attempt)
+            address = (block, _FRESH, first_draw + draw, attempt, *self._set.code)
             keys = KeyStream(self._seed, address, self._n).read(1)
             values = keys if self._one_cell else keys | self._high
             rows = [indicator[draw : draw + 1] for indicator in indicators]

@@ -13,7 +13,8 @@ class ReferenceSet:
     """Subjects whose arm labels are exchanged, within cells, with the arm sizes of each cell kept.
 
     name : for messages and tables, e.g. "4 % vs vehicle"
-    code : int, the set's own address among the key streams
+    code : the set's own address among the key streams: the place of each arm's first subject, so that neither the
+        names nor the order of arms change a draw
     arms : indices of the arms in the study; the first gets the lowest keys
     subjects : (subject,) intp, positions among the study's subjects, ascending
     arm : (subject,) intp, index into `arms`
@@ -22,7 +23,7 @@ class ReferenceSet:
     """
 
     name: str
-    code: int
+    code: tuple[int, ...]
     arms: tuple[int, ...]
     subjects: np.ndarray
     arm: np.ndarray
@@ -30,17 +31,17 @@ class ReferenceSet:
     sizes: np.ndarray
 
 
-def pair_set(arm: np.ndarray, cell: np.ndarray, pair: tuple[int, int], *, n_arms: int, name: str) -> ReferenceSet:
+def pair_set(arm: np.ndarray, cell: np.ndarray, pair: tuple[int, int], *, name: str) -> ReferenceSet:
     """Return the reference set of the subjects of two arms: pair = (tested, reference)."""
-    return _reference_set(arm, cell, pair, code=1 + pair[0] * n_arms + pair[1], name=name)
+    return _reference_set(arm, cell, pair, name=name)
 
 
 def whole_set(arm: np.ndarray, cell: np.ndarray, *, n_arms: int, name: str) -> ReferenceSet:
     """Return the reference set of all subjects and arms."""
-    return _reference_set(arm, cell, tuple(range(n_arms)), code=1 + n_arms * n_arms, name=name)
+    return _reference_set(arm, cell, tuple(range(n_arms)), name=name)
 
 
-def _reference_set(arm, cell, arms, *, code, name) -> ReferenceSet:
+def _reference_set(arm, cell, arms, *, name) -> ReferenceSet:
     local = np.full(arm.max() + 1, -1)
     local[list(arms)] = np.arange(len(arms))
     subjects = np.flatnonzero(local[arm] >= 0)
@@ -48,6 +49,7 @@ def _reference_set(arm, cell, arms, *, code, name) -> ReferenceSet:
     arms_of = local[arm[subjects]]
     sizes = np.zeros((cells.max() + 1, len(arms)), dtype=np.intp)
     np.add.at(sizes, (cells, arms_of), 1)
+    code = tuple(int(np.flatnonzero(arm == k)[0]) for k in arms)
     return ReferenceSet(name=name, code=code, arms=arms, subjects=subjects, arm=arms_of, cell=cells, sizes=sizes)
 
 

@@ -12,7 +12,7 @@ from mtest.relabel.selection import Selector
 from mtest.relabel.sets import ReferenceSet, count_relabellings
 
 _CAP = 2**62
-_DECISIONS = 0  # branch of a block's address for the mixing decisions; a set's own keys stand under its code
+_DECISIONS = 0  # branch of a block's address for the mixing decisions: (block, 0); own keys: (block, code of the pair)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -54,7 +54,7 @@ class DrawnReader:
         self._shared = KeyStream(seed, (block,), len(self._labels.share))
         if len(self._mixed):
             self._decisions = KeyStream(seed, (block, _DECISIONS), len(self._mixed))
-            self._own = [KeyStream(seed, (block, s.code), len(i)) for s, i in zip(sets, self._inside)]
+            self._own = [KeyStream(seed, (block, *s.code), len(i)) for s, i in zip(sets, self._inside)]
 
     def advance(self, n_draws: int) -> None:
         """Read the keys of the next batch of draws."""

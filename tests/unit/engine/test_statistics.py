@@ -5,10 +5,11 @@ import pytest
 from scipy import stats
 from statsmodels.regression.linear_model import OLS
 
+from mtest.engine.constants import derive_constants
 from mtest.engine.job import Hypotheses, build_job
 from mtest.engine.kernel import run_pilot
 from mtest.engine.panels import build_panel, compute_statistics
-from mtest.engine.statistics import divide
+from mtest.engine.statistics import MANY, divide
 from mtest.relabel.sets import pair_set, whole_set
 from mtest.relabel.sources import EnumeratedLabels
 from mtest.scores import SCORES
@@ -24,7 +25,7 @@ MISSING = np.where(np.isin(np.arange(N), [2, 7, 8, 20]), np.nan, Y)
 def statistic(name, y, arm, stratum, *, cell=None, labels=None):
     """Return the engine's statistic of arm 0 against arm 1, for the labels as they are or as given."""
     cell = stratum if cell is None else cell
-    chosen = pair_set(arm, cell, (0, 1), n_arms=2, name="pair")
+    chosen = pair_set(arm, cell, (0, 1), name="pair")
     panel = build_panel(
         SCORES[name](y, stratum)[None, :],
         rows=np.array([0]),
@@ -103,7 +104,7 @@ def test_standardised_statistics_have_mean_0_and_variance_1_over_all_relabelling
     cell = np.array([0, 0, 0, 0, 1, 1, 1, 2, 2, 2])
     y = np.random.default_rng(3).exponential(size=10).round(1)
     stratum = cell if cells == "strata" else one(10)
-    chosen = pair_set(arm, cell, (0, 1), n_arms=2, name="pair")
+    chosen = pair_set(arm, cell, (0, 1), name="pair")
     labels = EnumeratedLabels(sets=(chosen,))
     hypotheses = Hypotheses(
         scores=(SCORES[name](y, stratum),), statistic=(name,), set_index=(0,), first=(0,), second=(1,)
@@ -120,9 +121,7 @@ def test_rank_without_strata_is_the_rank_sum_standardised_with_ties():
     kept = np.isfinite(y)
     ranks = stats.rankdata(y[kept])
     n, n_a = kept.sum(), (ARM[kept] == 0).sum()
-    expected = (ranks[ARM[kept] == 0].sum() - n_a * (n + 1) / 2) / np.sqrt(
-        n_a * (n - n_a) / (n - 1) * ranks.var()
-    )
+    expected = (ranks[ARM[kept] == 0].sum() - n_a * (n + 1) / 2) / np.sqrt(n_a * (n - n_a) / (n - 1) * ranks.var())
     assert statistic("rank", y, ARM, one()) == pytest.approx(expected, rel=1e-12)
 
 
@@ -151,39 +150,16 @@ def test_unscaled_difference_with_strata_is_precision_weighted():
 @pytest.mark.parametrize("y", [Y, MISSING], ids=["complete", "missing"])
 @pytest.mark.parametrize("name", ["welch", "pooled", "difference", "unscaled difference", "rank"])
 @pytest.mark.parametrize("strata", [False, True], ids=["one stratum", "strata"])
-def test_two_arms_relabelled_together_are_a_pair(name, y, strata):
-    """The forms for several arms, given two, equal the pair's."""
+def test_the_form_for_several_arms_given_two_equals_the_pair_s(name, y, strata):
     stratum = STRATUM if strata else one()
-    pair = statistic(name, y, ARM, stratum)
-    third = np.concatenate([ARM, [2, 2]])
-    everyone = whole_set(ARM, stratum, n_arms=2, name="all arms")
-    assert everyone.arms == (0, 1)
-    from mtest.engine import panels
-
-    panel = build_panel(
-        SCORES[name](y, stratum)[None, :],
-        rows=np.array([0]),
-        statistic=name,
-        reference_set=everyone,
-        set_index=0,
-        stratum=stratum,
-        first=0,
-        second=1,
-    )
-    sums = [panel.stack @ (ARM == 0).astype(float)[:, None]]
-    if panel.coefficients is None:
-        assert panels._from_many(panel, sums)[0, 0] == pytest.approx(pair, rel=1e-10)
-    else:
-        # A complete pair's stack carries factors; undo them to feed the general form.
-        q = 1 / panel.sizes[0] + 1 / panel.sizes[1]
-        y0 = np.nan_to_num(SCORES[name](y, stratum))
-        s = [np.array([[y0[ARM == k].sum()]]) for k in (0, 1)]
-        s2 = [np.array([[(y0[ARM == k] ** 2).sum()]]) for k in (0, 1)]
-        den2 = panels.MANY[name](0, 1, s, s2, list(panel.sizes), panel.constants)
-        d = s[0] / panel.sizes[0] - s[1] / panel.sizes[1] - panel.constants.mu
-        assert (d / np.sqrt(den2))[0, 0] == pytest.approx(pair, rel=1e-10)
-        assert q > 0
-    assert len(third) == N + 2
+    chosen = whole_set(ARM, stratum, n_arms=2, name="all arms")
+    scores = SCORES[name](y, stratum)[None, :]
+    constants = derive_constants(scores, reference_set=chosen, stratum=stratum, first=0, second=1)
+    x, present = np.nan_to_num(scores[0]), np.isfinite(scores[0])
+    s, s2, m = ([np.array([[v[ARM == k].sum()]]) for k in (0, 1)] for v in (x, x**2, present.astype(float)))
+    den2 = MANY[name](0, 1, s, s2, m, constants)
+    general = (s[0] / m[0] - s[1] / m[1] - constants.mu) / np.sqrt(den2)
+    assert general[0, 0] == pytest.approx(statistic(name, y, ARM, stratum), rel=1e-10)
 
 
 def test_all_arms_pooled_t_uses_the_variance_of_every_arm():

@@ -21,7 +21,7 @@ def test_golden_hash_of_the_first_labels():
     arm = np.repeat([0, 1], [5, 6])
     labels = DrawnLabels(
         seed=417,
-        sets=(pair_set(arm, np.zeros(11, dtype=int), (0, 1), n_arms=2, name="pair"),),
+        sets=(pair_set(arm, np.zeros(11, dtype=int), (0, 1), name="pair"),),
         share=np.ones(11),
         n_draws=2048,
     )

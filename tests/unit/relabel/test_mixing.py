@@ -9,7 +9,9 @@ from mtest.relabel.sets import pair_set
 from mtest.relabel.sources import DrawnLabels
 
 
-@pytest.mark.parametrize(("p", "q"), [((20, 20), (20, 20)), ((15, 90), (15, 90)), ((30, 40), (10, 40)), ((7, 3), (5, 9))])
+@pytest.mark.parametrize(
+    ("p", "q"), [((20, 20), (20, 20)), ((15, 90), (15, 90)), ((30, 40), (10, 40)), ((7, 3), (5, 9))]
+)
 def test_common_weight_is_the_integral_of_the_two_weights(p, q):
     def product(u):
         return (1 / p[0] if u <= p[0] / sum(p) else -1 / p[1]) * (1 / q[0] if u <= q[0] / sum(q) else -1 / q[1])
@@ -44,7 +46,7 @@ def relabelled_correlation(sizes, share, *, draws=40_960):
     arm = np.repeat(np.arange(3), sizes)
     cell = np.zeros(len(arm), dtype=int)
     y = rng.standard_normal(len(arm))
-    sets = tuple(pair_set(arm, cell, (k, 0), n_arms=3, name="pair") for k in (1, 2))
+    sets = tuple(pair_set(arm, cell, (k, 0), name="pair") for k in (1, 2))
     reader = DrawnLabels(seed=2, sets=sets, share=np.where(arm == 0, share, 1.0), n_draws=10**9).reader()
     sums = [[], []]
     for block in range(draws // 1024):
