@@ -9,7 +9,7 @@ import math
 from dataclasses import dataclass
 
 from mtest.report import formats
-from mtest.report.wording import ERROR_RATE, procedure_in_words, sidedness
+from mtest.report.wording import ERROR_RATE, procedure_in_words, sidedness, uses_maximum
 from mtest.results import AnalysisResult, ArmCount, Effect, FamilyResult, HypothesisResult
 
 PERCENT_MEASURES = ("risk difference",)  # shown in percentage points
@@ -155,8 +155,10 @@ def _answer(family: FamilyResult, hypotheses: tuple[HypothesisFacts, ...], level
     ]
     ways = [(way, sum(h.direction == way for h in rejected)) for way in ("better", "worse", "")]
     said = [f"{n} with the tested arm {way}" if way else f"{n} without a direction" for way, n in ways if n]
-    if len(rejected) == 1 and rejected[0].direction:
-        sentences.append(f"There the tested arm did {rejected[0].direction} than its reference.")
+    ways_seen = {h.direction for h in rejected}
+    if len(ways_seen) == 1 and (way := ways_seen.pop()):
+        where = "In all of these" if len(rejected) > 1 else "There"
+        sentences.append(f"{where} the tested arm did {way} than its reference.")
     elif said:
         sentences.append("Of these, " + " and ".join(said) + ".")
     return tuple(sentences)
@@ -173,13 +175,26 @@ def _saving(family: FamilyResult) -> str:
     if not (math.isfinite(family.equivalent_endpoints) and math.isfinite(family.local_alpha)):
         return ""
     m = len(family.hypotheses)
-    return (
-        f"Because the statistics move together, judging these {m} hypotheses jointly costs as much as judging "
+    own = uses_maximum(family.procedure)
+    joint = (
+        f"judging these {m} hypotheses by their maximum {'costs' if own else 'would cost'} as much as judging "
         f"{formats.format_number(family.equivalent_endpoints, 1)} independent ones (the equivalent number of "
-        f"independent endpoints): each is held to {formats.format_p(family.local_alpha, alpha=1e-4)} "
-        f"in place of the {formats.format_p(family.alpha / m, alpha=1e-4)} that an equal split of "
-        f"{formats.format_plain(family.alpha)} would leave."
+        "independent endpoints)"
     )
+    levels = (
+        f"each is held to {formats.format_p(family.local_alpha, alpha=1e-4)} where an equal split of "
+        f"{formats.format_plain(family.alpha)} would leave {formats.format_p(family.alpha / m, alpha=1e-4)}."
+    )
+    if family.equivalent_endpoints < m:
+        sentences = [f"Because the statistics move together, {joint}: {levels}"]
+    else:  # a maximum over statistics with unlike tails can cost more than an equal split
+        sentences = [
+            f"Here the correlation saves nothing: {joint}; {levels} Either the statistics hardly move together, or the "
+            "tails of their distributions are unlike."
+        ]
+    if not own:
+        sentences.append(f"This family's adjustment, by {procedure_in_words(family.procedure)}, makes no use of it.")
+    return " ".join(sentences)
 
 
 def _hypothesis_facts(h: HypothesisResult, family: FamilyResult) -> HypothesisFacts:
@@ -189,18 +204,19 @@ def _hypothesis_facts(h: HypothesisResult, family: FamilyResult) -> HypothesisFa
     def p(value: float) -> str:
         return formats.format_p(value, alpha=alpha)
 
+    digits = min(max(formats.digits_for(h.sd_arm, fallback=0), formats.digits_for(h.sd_reference, fallback=0)), 3)
     reach = formats.format_p_range(h.p_adjusted_low, h.p_adjusted_high, alpha=alpha)
 
     return HypothesisFacts(
         raw=h,
-        comparison=f"{h.arm} v {h.reference}",
+        comparison=f"{h.arm} vs {h.reference}",
         measure=measure_in_words(h.effect.measure, h.unit),
         estimate=estimate,
         interval=interval,
         n_arm=f"{h.n_arm} ({h.missing_arm})",
         n_reference=f"{h.n_reference} ({h.missing_reference})",
-        arm_summary=_summary(h.kind, h.mean_arm, h.sd_arm, h.n_arm),
-        reference_summary=_summary(h.kind, h.mean_reference, h.sd_reference, h.n_reference),
+        arm_summary=_summary(h.kind, h.mean_arm, h.sd_arm, h.n_arm, digits),
+        reference_summary=_summary(h.kind, h.mean_reference, h.sd_reference, h.n_reference, digits),
         others="; ".join(f"{e.measure} {' ('.join(effect_in_words(e))})" for e in h.other_effects),
         statistic=formats.format_number(h.statistic_value, 2),
         p_unadjusted=p(h.p_unadjusted),
@@ -246,6 +262,8 @@ def effect_in_words(effect: Effect) -> tuple[str, str]:
     """Return an estimate and its interval with the digits its standard error supports."""
     scale = shown_scale(effect)
     digits = formats.digits_for(_spread(effect) * scale, fallback=1 if scale > 1 else 2)
+    if effect.null == 1:
+        digits = max(digits, 2)  # a ratio of 0.2 says less than 0.15 or 0.24, whatever its interval
     return (
         formats.format_number(effect.estimate * scale, digits),
         formats.format_range(effect.low * scale, effect.high * scale, digits),
@@ -267,10 +285,9 @@ def measure_in_words(measure: str, unit: str) -> str:
     return f"{measure}, {unit}" if (unit and "difference" in measure) or (unit and "shift" in measure) else measure
 
 
-def _summary(kind: str, mean: float, sd: float, n: int) -> str:
+def _summary(kind: str, mean: float, sd: float, n: int, digits: int) -> str:
     if math.isnan(mean) or n == 0:
         return formats.NOT_ESTIMABLE
     if kind == "binary":
         return f"{round(mean * n)} ({formats.format_number(mean * 100, 1)} %)"
-    digits = min(formats.digits_for(sd), 3)
     return f"{formats.format_number(mean, digits)} ({formats.format_number(sd, digits)})"

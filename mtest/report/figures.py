@@ -11,6 +11,7 @@ from matplotlib.colors import LinearSegmentedColormap
 from mtest.report import formats
 from mtest.report.drawing import ACCENT, INK, QUIET, RULE, Picture, canvas, quiet_axis, to_picture
 from mtest.report.facts import FamilyFacts, HypothesisFacts, shown_scale
+from mtest.report.wording import procedure_in_words, uses_maximum
 
 MOST_PANELS = 48  # endpoints drawn in the forest plots of a family
 MOST_ROWS = 60  # hypotheses drawn in the picture of adjustments
@@ -119,6 +120,9 @@ def draw_null(family: FamilyFacts) -> Picture | None:
         axes.set_xlabel("statistic" if family.raw.alternative == "better" else "statistic, without its sign")
         quiet_axis(axes)
         beyond = sum(value >= null.critical for value in observed)
+        aside = ""
+        if not uses_maximum(family.raw.procedure):
+            aside = f" Shown for comparison: {procedure_in_words(family.raw.procedure)} makes no use of it."
         infinite = " Diamonds: infinite, drawn at the edge." if any(math.isinf(value) for value in observed) else ""
         return to_picture(
             figure,
@@ -129,7 +133,7 @@ def draw_null(family: FamilyFacts) -> Picture | None:
             caption="Shaded: the largest statistic of the family in each relabelling, that is, what the best-looking "
             "hypothesis reaches when no arm does anything. Dots: the observed statistics, filled where rejected. "
             "Dashed: the value a single-step test asks of every hypothesis; a step-down procedure asks less of the "
-            "later ones." + infinite,
+            "later ones." + infinite + aside,
         )
 
 

@@ -9,6 +9,7 @@ from mtest.report.wording import (
     EXCHANGE,
     MISSING_RULES,
     PROCEDURES,
+    REFERENCES,
     SCHEMES,
     STATISTICS,
     procedure_in_words,
@@ -29,6 +30,12 @@ def describe_method(facts: ReportFacts) -> tuple[Entry, ...]:
         ("Rounding", (_ROUNDING,)),
     )
     return common + tuple((f"Family “{family.raw.name}”", _family(family)) for family in facts.families)
+
+
+def list_references(facts: ReportFacts) -> tuple[str, ...]:
+    """Return the papers that the method, as described, refers to."""
+    text = " ".join(part for _, paragraphs in describe_method(facts) for part in paragraphs)
+    return tuple(entry for cited, entry in REFERENCES.items() if cited in text)
 
 
 def describe_run(facts: ReportFacts) -> tuple[Entry, ...]:
@@ -75,14 +82,13 @@ def _counting(facts: ReportFacts) -> tuple[str, ...]:
     parts = []
     if any(not family.raw.exact for family in facts.families):
         parts.append(
-            f"Relabellings are drawn from seed {run.seed} with the generator {run.generator}, of which only the raw "
-            f"integers are used, in blocks of {formats.format_count(run.block_draws)}; draw r is the same whatever the "
-            "number of processes. One draw serves every endpoint and every comparison. With S draws of B at least as "
-            "extreme as the observed data, p = (1 + S) / (1 + B) (Phipson & Smyth 2010), which is never zero. Drawing "
-            f"goes on from {formats.format_count(run.draws_at_least)} up to "
-            f"{formats.format_count(run.draws_at_most)} draws until every decision is settled: until the confidence "
-            "sequence of each adjusted p (Robbins 1970), which stays valid under stopping, lies on one side of the "
-            "level."
+            f"Relabellings are drawn from seed {run.seed} (generator: {run.generator}) in blocks of "
+            f"{formats.format_count(run.block_draws)}; draw r is the same whatever the number of processes. One draw "
+            "serves every endpoint and every comparison. With S draws of B at least as extreme as the observed data, "
+            "p = (1 + S) / (1 + B) (Phipson & Smyth 2010), which is never zero. Drawing goes on from "
+            f"{formats.format_count(run.draws_at_least)} up to {formats.format_count(run.draws_at_most)} draws until "
+            "every decision is settled: until the confidence sequence of each adjusted p (Robbins 1970), which stays "
+            "valid under stopping, lies on one side of the level."
         )
     if any(family.raw.exact for family in facts.families):
         parts.append(
@@ -101,11 +107,12 @@ def _statistics(facts: ReportFacts) -> tuple[str, ...]:
     for family in facts.families:
         for h in family.hypotheses:
             rows.setdefault((h.raw.kind, h.raw.statistic), (h.raw.model, h.raw.effect.measure, h.raw.effect.method))
-    return tuple(
+    kinds = (
         f"{kind[0].upper()}{kind[1:]} endpoints: {STATISTICS.get(statistic, statistic)}. Model-based p: {model}. "
         f"Estimate: {measure}; interval: {method}."
         for (kind, statistic), (model, measure, method) in rows.items()
     )
+    return (*kinds, "Where the design has strata, scores are centred or ranked within them.")
 
 
 def _missing(facts: ReportFacts) -> tuple[str, ...]:

@@ -11,9 +11,9 @@ import jinja2
 from mtest.report.drawing import Picture
 from mtest.report.facts import FamilyFacts, gather_facts
 from mtest.report.figures import draw_adjustment, draw_correlation, draw_forest, draw_null
-from mtest.report.method import describe_method, describe_run
+from mtest.report.method import describe_method, describe_run, list_references
 from mtest.report.tables import Table, accounting_table, decision_matrix, results_table, summaries_table
-from mtest.report.wording import CAUTIONS, GLOSSARY, REFERENCES
+from mtest.report.wording import CAUTIONS, GLOSSARY
 from mtest.results import AnalysisResult
 
 CONTENTS = (
@@ -73,7 +73,7 @@ def render_page(result: AnalysisResult) -> str:
         contents=CONTENTS,
         method=describe_method(facts),
         run=describe_run(facts),
-        references=REFERENCES,
+        references=list_references(facts),
         glossary=GLOSSARY,
         cautions=CAUTIONS,
         style=_read("style.css"),

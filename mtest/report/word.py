@@ -21,9 +21,9 @@ from docx.table import _Cell, _Row
 from docx.text.paragraph import Paragraph
 
 from mtest.report.facts import FamilyFacts, ReportFacts, gather_facts
-from mtest.report.method import describe_method, describe_run
+from mtest.report.method import describe_method, describe_run, list_references
 from mtest.report.tables import Cell, Table, accounting_table, decision_matrix, results_table, summaries_table
-from mtest.report.wording import CAUTIONS, GLOSSARY, REFERENCES
+from mtest.report.wording import CAUTIONS, GLOSSARY
 from mtest.results import AnalysisResult
 
 PAGE_WIDTH, PAGE_HEIGHT, MARGIN = Mm(297), Mm(210), Mm(16)
@@ -129,7 +129,7 @@ def _add_words(document: DocumentObject, facts: ReportFacts) -> None:
     document.add_heading("Cautions", level=1)
     _add_list(document, CAUTIONS, "")
     document.add_heading("References", level=1)
-    for reference in REFERENCES:
+    for reference in list_references(facts):
         document.add_paragraph(reference)
     document.add_heading("Reproduction", level=1)
     _add_entries(document, describe_run(facts))

@@ -31,7 +31,7 @@ SCHEMES: dict[str, str] = {
 
 EXCHANGE: dict[str, str] = {
     "within-pair": "For a comparison of two arms only the subjects of those two arms exchange their labels; the data "
-    "of other arms never enter it.",
+    "of other arms never enter it (Troendle & Westfall 2011).",
     "all-arms": "All arms exchange their labels together; for a comparison of two arms this is exact only where no arm "
     "differs from any other.",
 }
@@ -54,7 +54,8 @@ STATISTICS: dict[str, str] = {
 
 MISSING_RULES: dict[str, str] = {
     "available": "the subject's outcome stays missing and travels with the subject when labels are exchanged",
-    "worst-score": "a missing outcome is ranked below the worst that was observed",
+    "worst-score": "a missing outcome is given the worst there is: ranked below the worst that was observed, or, of "
+    "two outcomes, counted as the worse",
 }
 
 GLOSSARY: dict[str, tuple[str, str]] = {
@@ -120,21 +121,61 @@ CAUTIONS: tuple[str, ...] = (
     "locally.",
 )
 
-REFERENCES: tuple[str, ...] = (
-    "Phipson B, Smyth GK (2010). Permutation p-values should never be zero: calculating exact p-values when "
-    "permutations are randomly drawn. Statistical Applications in Genetics and Molecular Biology 9(1), article 39.",
-    "Robbins H (1970). Statistical methods related to the law of the iterated logarithm. Annals of Mathematical "
-    "Statistics 41, 1397–1409.",
-    "Troendle JF, Westfall PH (2011). Permutational multiple testing adjustments with multivariate multiple group "
-    "data. Journal of Statistical Planning and Inference 141, 2021–2029.",
-    "Westfall PH, Young SS (1993). Resampling-Based Multiple Testing: Examples and Methods for p-Value Adjustment. "
-    "New York: Wiley.",
-)
+REFERENCES: dict[str, str] = {
+    "Benjamini & Hochberg 1995": (
+        "Benjamini Y, Hochberg Y (1995). Controlling the false discovery rate: a practical and powerful approach "
+        "to multiple testing. Journal of the Royal Statistical Society B 57, 289–300."
+    ),
+    "Benjamini & Yekutieli 2001": (
+        "Benjamini Y, Yekutieli D (2001). The control of the false discovery rate in multiple testing under "
+        "dependency. Annals of Statistics 29, 1165–1188."
+    ),
+    "Dunn 1961": (
+        "Dunn OJ (1961). Multiple comparisons among means. Journal of the American Statistical Association 56, 52–64."
+    ),
+    "Hochberg 1988": (
+        "Hochberg Y (1988). A sharper Bonferroni procedure for multiple tests of significance. Biometrika 75, 800–802."
+    ),
+    "Holm 1979": (
+        "Holm S (1979). A simple sequentially rejective multiple test procedure. Scandinavian Journal of "
+        "Statistics 6, 65–70."
+    ),
+    "Hommel 1988": (
+        "Hommel G (1988). A stagewise rejective multiple test procedure based on a modified Bonferroni test. "
+        "Biometrika 75, 383–386."
+    ),
+    "Phipson & Smyth 2010": (
+        "Phipson B, Smyth GK (2010). Permutation p-values should never be zero: calculating exact p-values when "
+        "permutations are randomly drawn. Statistical Applications in Genetics and Molecular Biology 9(1), "
+        "article 39."
+    ),
+    "Robbins 1970": (
+        "Robbins H (1970). Statistical methods related to the law of the iterated logarithm. Annals of "
+        "Mathematical Statistics 41, 1397–1409."
+    ),
+    "Troendle & Westfall 2011": (
+        "Troendle JF, Westfall PH (2011). Permutational multiple testing adjustments with multivariate multiple "
+        "group data. Journal of Statistical Planning and Inference 141, 2021–2029."
+    ),
+    "Westfall & Young 1993": (
+        "Westfall PH, Young SS (1993). Resampling-Based Multiple Testing: Examples and Methods for p-Value "
+        "Adjustment. New York: Wiley."
+    ),
+    "Šidák 1967": (
+        "Šidák Z (1967). Rectangular confidence regions for the means of multivariate normal distributions. "
+        "Journal of the American Statistical Association 62, 626–633."
+    ),
+}
 
 
 def procedure_in_words(procedure: str) -> str:
     """Return the procedure's name as it stands in a sentence."""
     return PROCEDURES.get(procedure, (procedure, ""))[0]
+
+
+def uses_maximum(procedure: str) -> bool:
+    """Return whether the procedure refers to the distribution of the maximum."""
+    return procedure.endswith("max-T")
 
 
 def sidedness(alternative: str) -> str:

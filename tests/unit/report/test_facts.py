@@ -6,8 +6,8 @@ from dataclasses import replace
 import pytest
 
 from mtest.report import facts as f
-from mtest.report.method import describe_method, describe_run
-from mtest.report.wording import ERROR_RATE, PROCEDURES
+from mtest.report.method import describe_method, describe_run, list_references
+from mtest.report.wording import ERROR_RATE, PROCEDURES, REFERENCES
 
 
 def _with_procedure(result, procedure):
@@ -63,7 +63,7 @@ def test_every_procedure_of_the_plan_has_words():
 
 def test_an_unsettled_decision_is_named_with_its_interval(two_families):
     (sentence,) = f.gather_facts(two_families).families[0].unsettled
-    assert sentence.startswith("Pain on movement, change to week 12, 2 % v vehicle: the adjusted p is 0.0495")
+    assert sentence.startswith("Pain on movement, change to week 12, 2 % vs vehicle: the adjusted p is 0.0495")
     assert "(0.047 to 0.053)" in sentence
 
 
@@ -128,7 +128,7 @@ def test_method_gives_both_p_value_formulas_where_both_were_used(two_families, f
 def test_method_states_seed_generator_draws_and_relabellings_of_the_run(invented, four_arms):
     facts = f.gather_facts(replace(four_arms, run=replace(four_arms.run, seed=98_765, generator="Other bits")))
     entries = dict(describe_method(facts))
-    assert "seed 98765 with the generator Other bits" in " ".join(entries["Counting"])
+    assert "seed 98765 (generator: Other bits)" in " ".join(entries["Counting"])
     assert "Draws: 20,000." in " ".join(entries["Family “secondary”"])
     assert "1 %, vehicle: " in " ".join(entries["Family “secondary”"])
 
@@ -139,3 +139,42 @@ def test_reproduction_holds_every_hash_but_no_date(four_arms):
     assert run.plan_sha256 in text
     assert all(digest in text for _, digest in run.data_sha256)
     assert run.finished_utc not in text
+
+
+@pytest.mark.parametrize("procedure", [name for name in PROCEDURES if name != "none"])
+def test_the_paper_behind_a_procedure_is_listed(four_arms, procedure):
+    references = list_references(f.gather_facts(_with_procedure(four_arms, procedure)))
+    cited = PROCEDURES[procedure][1].split("; ")
+    assert all(REFERENCES[name] in references for name in cited)
+
+
+def test_papers_that_played_no_part_are_not_listed(four_arms):
+    references = list_references(f.gather_facts(four_arms))
+    assert REFERENCES["Westfall & Young 1993"] in references
+    assert REFERENCES["Hommel 1988"] not in references
+
+
+def test_a_procedure_that_uses_no_maximum_does_not_claim_its_saving(four_arms):
+    family = f.gather_facts(_with_procedure(four_arms, "Holm")).families[0]
+    assert "would cost" in family.saving
+    assert family.saving.endswith("by Holm's step-down procedure, makes no use of it.")
+
+
+def test_answer_says_so_where_every_rejection_points_the_same_way(four_arms):
+    family = four_arms.families[0]
+    kept = tuple(h for h in family.hypotheses if h.group != "Tolerability")
+    answer = f.gather_facts(replace(four_arms, families=(replace(family, hypotheses=kept),))).families[0].answer
+    assert answer[1] == "In all of these the tested arm did better than its reference."
+
+
+def test_ratios_have_at_least_two_decimals(four_arms):
+    h = next(h for h in four_arms.families[0].hypotheses if h.kind == "binary")
+    wide = replace(h.other_effects[0], estimate=1.4, low=0.2, high=8.9)
+    assert f.effect_in_words(wide) == ("1.40", "0.20 to 8.90")
+
+
+def test_no_saving_is_claimed_where_the_joint_judgement_costs_more_than_independence(four_arms):
+    family = replace(four_arms.families[0], equivalent_endpoints=42.5)
+    saving = f.gather_facts(replace(four_arms, families=(family,))).families[0].saving
+    assert saving.startswith("Here the correlation saves nothing")
+    assert "Because the statistics move together" not in saving

@@ -10,7 +10,7 @@ from mtest.report.wording import GLOSSARY
 def test_results_have_one_row_for_each_hypothesis_in_the_plans_order(four_arms):
     family = gather_facts(four_arms).families[0]
     rows = tables.results_table(family).rows
-    expected = [(h.endpoint, f"{h.arm} v {h.reference}") for h in four_arms.families[0].hypotheses]
+    expected = [(h.endpoint, f"{h.arm} vs {h.reference}") for h in four_arms.families[0].hypotheses]
     assert [(row[0].text, row[1].text) for row in rows] == expected
 
 
