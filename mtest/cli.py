@@ -114,15 +114,14 @@ def main() -> None:
     except MtestError as error:
         _say(error.faults)
         code = error.exit_code
-    except typer.Abort:
+    except (KeyboardInterrupt, typer.Abort):
         code = INTERRUPTED
-    except KeyboardInterrupt:
-        _say(["Interrupted; nothing was written."])
-        # Threads in the middle of a block would be waited for: leave at once.
-        sys.stderr.flush()
-        os._exit(INTERRUPTED)
     except Exception as error:
         code = _usage(error)
+    if code == INTERRUPTED:
+        _say(["Interrupted; nothing was written."])
+        sys.stderr.flush()
+        os._exit(code)  # threads in the middle of a block would be waited for
     sys.exit(code)
 
 
@@ -130,7 +129,7 @@ def _usage(error: Exception) -> int:
     """Return the exit code of a faulty command line, or of a bug of ours, after saying so."""
     message = getattr(error, "format_message", None)
     if message is not None:
-        _say([f"mtest: {message()} Try 'mtest --help'."])
+        _say([f"mtest: {message().rstrip('.')}. Try 'mtest --help'."])
         return 2
     with tempfile.NamedTemporaryFile("w", prefix="mtest-bug-", suffix=".txt", delete=False) as file:
         file.write(traceback.format_exc())

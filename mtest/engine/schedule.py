@@ -6,6 +6,7 @@ which depend on the plan alone; so the number of workers cannot change where a r
 
 from __future__ import annotations
 
+import multiprocessing
 import os
 import tempfile
 import time
@@ -15,7 +16,7 @@ from functools import lru_cache
 from pathlib import Path
 
 import joblib
-from joblib.externals.loky import get_reusable_executor
+from joblib.externals.loky.backend.process import LokyProcess
 from threadpoolctl import ThreadpoolController
 
 from mtest.engine.job import Job
@@ -121,9 +122,16 @@ def _run_blocks(job, thresholds, first: int, last: int, *, workers: int) -> Iter
                 n_jobs=workers, backend="loky", inner_max_num_threads=1, return_as="generator_unordered"
             )(tasks)
         except BaseException:
-            # Ctrl-C or a failure: no worker may outlive the run.
-            get_reusable_executor().shutdown(wait=False, kill_workers=True)
+            _end_workers()
             raise
+
+
+def _end_workers() -> None:
+    """End the worker processes after Ctrl-C or a failure, and wait for them: none may outlive the run, nor linger."""
+    for process in multiprocessing.active_children():
+        if isinstance(process, LokyProcess):
+            process.kill()
+            process.join()
 
 
 @lru_cache(maxsize=1)
