@@ -16,7 +16,7 @@ from mtest.engine.kernel import run_pilot, set_thresholds
 from mtest.engine.schedule import Progress, run_job
 from mtest.engine.tally import Tally, Thresholds
 from mtest.relabel.mixing import mixing_shares
-from mtest.relabel.sets import ReferenceSet, count_relabellings, pair_set, whole_set
+from mtest.relabel.sets import ReferenceSet, count_relabellings, key_columns, pair_set, whole_set
 from mtest.relabel.sources import DrawnLabels, EnumeratedLabels
 from mtest.results import NullDistribution
 from mtest.scores import SCORES
@@ -141,7 +141,7 @@ def judge_family(
     columns = _adjust(spec, runs)
     lone = runs[0] if len(runs) == 1 else None
     null = None if lone is None else _null(lone, spec.alpha)
-    local, equivalent = (np.nan, np.nan) if lone is None else _saving(lone, null, spec)
+    local, equivalent = (np.nan, np.nan) if lone is None else _saving(lone, spec)
     exact = all(run.exact for run in runs)
     n_draws = max(run.tally.n for run in runs)
     return FamilyTest(
@@ -173,7 +173,13 @@ def _run(design: Design, spec: FamilySpec, pairs, sets, *, n_jobs, report) -> _R
     if exact:
         labels = EnumeratedLabels(sets=sets)
     else:
-        labels = DrawnLabels(seed=spec.seed, sets=sets, share=_shares(design, spec, pairs), n_draws=2**62)
+        labels = DrawnLabels(
+            seed=spec.seed,
+            sets=sets,
+            share=_shares(design, spec, pairs),
+            column=key_columns(design.arm),
+            n_draws=2**62,
+        )
     strata = tuple(design.stratum[s.subjects] for s in sets)
     job = build_job(_hypotheses(spec, pairs, sets, strata), labels=labels, strata=strata, two_sided=spec.two_sided)
     pilot = run_pilot(job)
@@ -301,17 +307,22 @@ def _null(run: _Run, alpha: float) -> NullDistribution:
     return NullDistribution(edges=edges, counts=counts, critical=float(edges[fits[0]]) if len(fits) else np.inf)
 
 
-def _saving(run: _Run, null: NullDistribution, spec: FamilySpec) -> tuple[float, float]:
-    """Return the level per hypothesis that the family's critical value amounts to, and the equivalent number of
-    independent endpoints, log(1 - alpha) / log(1 - local alpha); the former from the pilot draws."""
-    if "unscaled difference" in spec.statistic or not np.isfinite(null.critical):
+def _saving(run: _Run, spec: FamilySpec) -> tuple[float, float]:
+    """Return the level per hypothesis that the family's critical value amounts to, and how many independent
+    endpoints would need the same: log(1 - alpha) / log(1 - local alpha).
+
+    Both levels are taken from the same pilot draws at the same critical value, so their errors mostly cancel; the
+    logarithm is averaged over hypotheses, so that independent ones with unlike tails still count as their number.
+    """
+    if "unscaled difference" in spec.statistic:
         return np.nan, np.nan
     values = np.abs(run.pilot) if spec.two_sided else run.pilot
-    local = float(np.mean(values >= null.critical))
-    level = float(null.counts[null.edges[:-1] >= null.critical].sum() / run.tally.n)
-    if not 0 < local < 1 or not 0 < level < 1:
+    maxima = values.max(axis=0)
+    critical = np.quantile(maxima, 1 - spec.alpha, method="higher")
+    level, local = np.mean(maxima >= critical), np.mean(values >= critical, axis=1)
+    if not 0 < level < 1:
         return np.nan, np.nan
-    return local, float(np.log1p(-level) / np.log1p(-local))
+    return float(local.mean()), float(np.log1p(-level) / np.mean(np.log1p(-local)))
 
 
 def _correlation(run: _Run) -> np.ndarray | None:

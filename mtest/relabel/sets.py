@@ -16,7 +16,7 @@ class ReferenceSet:
     code : the set's own address among the key streams: the place of each arm's first subject, so that neither the
         names nor the order of arms change a draw
     arms : indices of the arms in the study; the first gets the lowest keys
-    subjects : (subject,) intp, positions among the study's subjects, ascending
+    subjects : (subject,) intp, positions among the study's subjects, arm by arm as in `key_columns`
     arm : (subject,) intp, index into `arms`
     cell : (subject,) intp, 0 .. n_cells - 1
     sizes : (cell, arm) intp
@@ -44,13 +44,26 @@ def whole_set(arm: np.ndarray, cell: np.ndarray, *, n_arms: int, name: str) -> R
 def _reference_set(arm, cell, arms, *, name) -> ReferenceSet:
     local = np.full(arm.max() + 1, -1)
     local[list(arms)] = np.arange(len(arms))
-    subjects = np.flatnonzero(local[arm] >= 0)
+    subjects = np.argsort(key_columns(arm))
+    subjects = subjects[local[arm[subjects]] >= 0]
     _, cells = np.unique(cell[subjects], return_inverse=True)
     arms_of = local[arm[subjects]]
     sizes = np.zeros((cells.max() + 1, len(arms)), dtype=np.intp)
     np.add.at(sizes, (cells, arms_of), 1)
     code = tuple(int(np.flatnonzero(arm == k)[0]) for k in arms)
     return ReferenceSet(name=name, code=code, arms=arms, subjects=subjects, arm=arms_of, cell=cells, sizes=sizes)
+
+
+def key_columns(arm: np.ndarray) -> np.ndarray:
+    """Return (subject,) the column of each subject among the keys: arm by arm, in the order arms first appear.
+
+    Keys are independent and alike, so any fixed order will do; this one lets a pair's keys be copied in two pieces, and
+    does not depend on the names of the arms.
+    """
+    _, first, code = np.unique(arm, return_index=True, return_inverse=True)
+    columns = np.empty(len(arm), dtype=np.intp)
+    columns[np.argsort(first[code], kind="stable")] = np.arange(len(arm))
+    return columns
 
 
 def count_relabellings(sizes: np.ndarray) -> int:

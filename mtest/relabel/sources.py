@@ -7,7 +7,7 @@ from math import comb
 
 import numpy as np
 
-from mtest.relabel.keys import BLOCK_DRAWS, KeyStream
+from mtest.relabel.keys import BLOCK_DRAWS, COARSE_BITS, KeyStream
 from mtest.relabel.selection import Selector
 from mtest.relabel.sets import ReferenceSet, count_relabellings
 
@@ -21,12 +21,14 @@ class DrawnLabels:
 
     sets : the reference sets
     share : (subject,) float, each subject's mixing share
+    column : (subject,) int, each subject's place among the keys of a draw
     n_draws : int, draws in all
     """
 
     seed: int
     sets: tuple[ReferenceSet, ...]
     share: np.ndarray
+    column: np.ndarray
     n_draws: int
 
     def reader(self) -> DrawnReader:
@@ -40,17 +42,22 @@ class DrawnReader:
     def __init__(self, labels: DrawnLabels) -> None:
         self._labels = labels
         self._selectors = [Selector(s, seed=labels.seed) for s in labels.sets]
-        self._mixed = np.flatnonzero(labels.share < 1)
-        # share < 1, so share * 2^32 fits; a key below it means: this draw uses the shared key.
-        self._cut = np.floor(labels.share[self._mixed] * 2.0**32).astype(np.uint32)
+        self._runs = [_runs(labels.column[s.subjects]) for s in labels.sets]
+        # The subjects who have mixing decisions and own keys, in the order of the columns.
+        self._mixed = np.argsort(labels.column)[np.sort(labels.column[labels.share < 1])]
+        # share < 1, so share * 2^16 fits; a key below it means: this draw uses the shared key. Rounding down is
+        # conservative.
+        self._cut = np.floor(labels.share[self._mixed] * 2.0**COARSE_BITS).astype(np.uint16)
         self._inside = [np.flatnonzero(np.isin(s.subjects, self._mixed)) for s in labels.sets]
-        self._place = [np.searchsorted(self._mixed, s.subjects[i]) for s, i in zip(labels.sets, self._inside)]
+        place = np.empty(len(labels.share), dtype=np.intp)
+        place[self._mixed] = np.arange(len(self._mixed))
+        self._place = [place[s.subjects[i]] for s, i in zip(labels.sets, self._inside)]
 
     def start(self, block: int) -> None:
         """Go to the start of a block."""
         seed, sets = self._labels.seed, self._labels.sets
-        self._block = block
-        self._done = 0
+        for selector in self._selectors:
+            selector.start(block)
         self._shared = KeyStream(seed, (block,), len(self._labels.share))
         if len(self._mixed):
             self._decisions = KeyStream(seed, (block, _DECISIONS), len(self._mixed))
@@ -58,8 +65,6 @@ class DrawnReader:
 
     def advance(self, n_draws: int) -> None:
         """Read the keys of the next batch of draws."""
-        self._first = self._done
-        self._done += n_draws
         self._n = n_draws
         self._keys = self._shared.read(n_draws)
         if len(self._mixed):
@@ -71,11 +76,17 @@ class DrawnReader:
         To be called once per set and batch, as a set's own keys are read on the way.
         """
         selector, inside = self._selectors[index], self._inside[index]
-        keys = selector.take(self._keys)
+        keys = selector.take(self._keys, self._runs[index])
         if len(inside):
             use_shared = self._use_shared[:, self._place[index]]
             keys[:, inside] = np.where(use_shared, keys[:, inside], self._own[index].read(self._n))
-        return selector.select(keys, block=self._block, first_draw=self._first)
+        return selector.select(keys)
+
+
+def _runs(columns: np.ndarray) -> list[tuple[slice, slice]]:
+    """Return the pieces (to, from) in which neighbouring columns can be copied together; two for a pair of arms."""
+    starts = np.concatenate([[0], np.flatnonzero(np.diff(columns) != 1) + 1, [len(columns)]]).tolist()
+    return [(slice(a, b), slice(int(columns[a]), int(columns[a]) + b - a)) for a, b in zip(starts[:-1], starts[1:])]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -12,8 +12,10 @@ from mtest.relabel.sources import DrawnLabels
 def test_first_raw_words_are_those_of_the_generator():
     bits = np.random.PCG64DXSM(np.random.SeedSequence(417, spawn_key=(0,)))
     words = [int(w) for w in bits.random_raw(2)]
-    keys = KeyStream(417, (0,), 4).read(1)[0]
-    assert list(keys) == [words[0] & 0xFFFFFFFF, words[0] >> 32, words[1] & 0xFFFFFFFF, words[1] >> 32]
+    coarse = [words[k // 4] >> (16 * (k % 4)) & 0xFFFF for k in range(5)]
+    assert list(KeyStream(417, (0,), 5).read(1)[0]) == coarse
+    fine = [words[0] & 0xFFFFFFFF, words[0] >> 32, words[1] & 0xFFFFFFFF]
+    assert list(KeyStream(417, (0,), 3, bits=32).read(1)[0]) == fine
 
 
 def test_golden_hash_of_the_first_labels():
@@ -23,6 +25,7 @@ def test_golden_hash_of_the_first_labels():
         seed=417,
         sets=(pair_set(arm, np.zeros(11, dtype=int), (0, 1), name="pair"),),
         share=np.ones(11),
+        column=np.arange(11),
         n_draws=2048,
     )
     reader = labels.reader()
@@ -31,7 +34,7 @@ def test_golden_hash_of_the_first_labels():
         reader.start(block)
         reader.advance(1024)
         digest.update(reader.fill(0)[0].astype(np.uint8).tobytes())
-    assert digest.hexdigest() == "9b71cad37ab7727753ae5f0becb8c436d5d746224b42a0caabb0512aa2d937d6"
+    assert digest.hexdigest() == "b06991996846dca79ec84c006541e943a258ea8cd2214f9584100ca528c63b35"
 
 
 def test_batches_do_not_change_a_key():

@@ -5,7 +5,7 @@ import pytest
 from scipy.integrate import quad
 
 from mtest.relabel.mixing import common_weight, mixing_shares
-from mtest.relabel.sets import pair_set
+from mtest.relabel.sets import key_columns, pair_set
 from mtest.relabel.sources import DrawnLabels
 
 
@@ -47,7 +47,9 @@ def relabelled_correlation(sizes, share, *, draws=40_960):
     cell = np.zeros(len(arm), dtype=int)
     y = rng.standard_normal(len(arm))
     sets = tuple(pair_set(arm, cell, (k, 0), name="pair") for k in (1, 2))
-    reader = DrawnLabels(seed=2, sets=sets, share=np.where(arm == 0, share, 1.0), n_draws=10**9).reader()
+    reader = DrawnLabels(
+        seed=2, sets=sets, share=np.where(arm == 0, share, 1.0), column=key_columns(arm), n_draws=10**9
+    ).reader()
     sums = [[], []]
     for block in range(draws // 1024):
         reader.start(block)

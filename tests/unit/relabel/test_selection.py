@@ -8,7 +8,7 @@ from scipy.stats import chi2
 
 from mtest.relabel.keys import KeyStream
 from mtest.relabel.selection import Selector
-from mtest.relabel.sets import count_relabellings, pair_set, whole_set
+from mtest.relabel.sets import count_relabellings, key_columns, pair_set, whole_set
 from mtest.relabel.sources import DrawnLabels, EnumeratedLabels
 
 DESIGNS = {
@@ -36,7 +36,7 @@ def codes(indicators):
 
 
 def drawn(chosen, *, blocks=40):
-    reader = DrawnLabels(seed=1, sets=(chosen,), share=np.ones(6), n_draws=10**6).reader()
+    reader = DrawnLabels(seed=1, sets=(chosen,), share=np.ones(6), column=np.arange(6), n_draws=10**6).reader()
     for block in range(blocks):
         reader.start(block)
         reader.advance(1024)
@@ -74,13 +74,22 @@ def test_arm_sizes_are_kept_in_every_cell(design):
                 assert np.all(indicator[:, chosen.cell == cell].sum(axis=1) == sizes[k])
 
 
+def selected(chosen, keys):
+    selector = Selector(chosen, seed=9)
+    selector.start(0)
+    return selector.select(np.array(keys, dtype=np.uint16))
+
+
 @pytest.mark.parametrize("design", ["one cell, two arms", "matched pairs", "three arms"])
 def test_keys_tied_at_a_border_are_resolved_uniformly_with_fresh_keys(design):
     """All keys equal: every label must come from the fresh keys."""
     chosen = reference_set(design)
     selector = Selector(chosen, seed=9)
-    keys = np.full((512, 6), 77, dtype=np.uint32)
-    seen = Counter(code for block in range(40) for code in codes(selector.select(keys, block=block, first_draw=0)))
+    keys = np.full((512, 6), 77, dtype=np.uint16)
+    seen = Counter()
+    for block in range(40):
+        selector.start(block)
+        seen.update(codes(selector.select(keys)))
     n = count_relabellings(chosen.sizes)
     expected = 40 * 512 / n
     statistic = sum((count - expected) ** 2 / expected for count in seen.values())
@@ -88,25 +97,70 @@ def test_keys_tied_at_a_border_are_resolved_uniformly_with_fresh_keys(design):
     assert statistic <= chi2.ppf(1 - 1e-6, n - 1)
 
 
+def test_fresh_keys_that_tie_again_are_drawn_again(monkeypatch):
+    """The first fresh keys are made to tie too; the next ones decide."""
+    calls = []
+
+    class Stub:
+        def __init__(self, *_, **__):
+            pass
+
+        def read(self, n_draws):
+            calls.append(n_draws)
+            return np.array([[5] * 6 if len(calls) == 1 else [1, 2, 3, 4, 5, 6]] * n_draws, dtype=np.uint32)
+
+    monkeypatch.setattr("mtest.relabel.selection.KeyStream", Stub)
+    labels = selected(reference_set("one cell, two arms"), [[7] * 6])[0]
+    assert labels[0].tolist() == [1, 1, 1, 0, 0, 0]
+    assert calls == [1, 1]
+
+
 def test_only_the_tied_draw_gets_fresh_keys():
-    chosen = reference_set("one cell, two arms")
-    keys = np.array([[1, 2, 3, 4, 5, 6], [9, 9, 9, 9, 9, 9], [6, 5, 4, 3, 2, 1]], dtype=np.uint32)
-    first = Selector(chosen, seed=9).select(keys, block=0, first_draw=0)[0]
+    keys = [[1, 2, 3, 4, 5, 6], [9, 9, 9, 9, 9, 9], [6, 5, 4, 3, 2, 1]]
+    first = selected(reference_set("one cell, two arms"), keys)[0]
     assert first[0].tolist() == [1, 1, 1, 0, 0, 0]
     assert first[2].tolist() == [0, 0, 0, 1, 1, 1]
     assert first[1].sum() == 3
 
 
 def test_a_tie_away_from_the_border_changes_nothing():
-    chosen = reference_set("one cell, two arms")
-    keys = np.array([[1, 1, 3, 4, 8, 8]], dtype=np.uint32)
-    assert Selector(chosen, seed=9).select(keys, block=0, first_draw=0)[0][0].tolist() == [1, 1, 1, 0, 0, 0]
+    assert selected(reference_set("one cell, two arms"), [[1, 1, 3, 4, 8, 8]])[0][0].tolist() == [1, 1, 1, 0, 0, 0]
 
 
 def test_the_extreme_keys_are_ordinary_keys():
     chosen = reference_set("two cells, one of them lopsided")
-    keys = np.array([[0, 2**32 - 1, 5, 0, 2**32 - 1, 7]], dtype=np.uint32)
-    assert Selector(chosen, seed=9).select(keys, block=0, first_draw=0)[0][0].tolist() == [1, 0, 0, 1, 0, 1]
+    assert chosen.subjects.tolist() == [0, 3, 4, 1, 2, 5]
+    keys = np.array([0, 2**16 - 1, 5, 0, 2**16 - 1, 7])[chosen.subjects]
+    expected = np.array([1, 0, 0, 1, 0, 1])[chosen.subjects]
+    assert selected(chosen, [keys])[0][0].tolist() == expected.tolist()
+
+
+def test_batches_do_not_change_the_labels_of_tied_draws():
+    """A large cell, so that ties at the border are common: a block read whole and in parts gives the same labels."""
+    arm = np.repeat([0, 1], 2000)
+    chosen = pair_set(arm, np.zeros(4000, dtype=int), (0, 1), name="pair")
+    reader = DrawnLabels(seed=3, sets=(chosen,), share=np.ones(4000), column=np.arange(4000), n_draws=10**6).reader()
+    reader.start(2)
+    reader.advance(1024)
+    whole = reader.fill(0)[0].copy()
+    reader.start(2)
+    parts = []
+    for size in (1, 500, 523):
+        reader.advance(size)
+        parts.append(reader.fill(0)[0].copy())
+    assert np.array_equal(whole, np.concatenate(parts))
+    assert np.all(whole.sum(axis=1) == 2000)
+
+
+def test_more_cells_than_16_bits_hold_are_kept_apart():
+    n = 70_000
+    arm, cell = np.tile([0, 1], n), np.repeat(np.arange(n), 2)
+    chosen = pair_set(arm, cell, (0, 1), name="pair")
+    reader = DrawnLabels(seed=3, sets=(chosen,), share=np.ones(2 * n), column=np.arange(2 * n), n_draws=10**6).reader()
+    reader.start(0)
+    reader.advance(4)
+    by_cell = reader.fill(0)[0][:, np.argsort(chosen.cell, kind="stable")]
+    assert np.all(by_cell.reshape(4, n, 2).sum(axis=2) == 1)
 
 
 def test_the_number_of_relabellings_is_an_exact_integer():
@@ -151,8 +205,8 @@ def test_own_keys_of_a_pair_do_not_depend_on_other_pairs():
     share = np.where(arm == 0, 0.4, 1.0)
     pair = pair_set(arm, cell, (2, 0), name="c vs a")
     other = pair_set(arm, cell, (1, 0), name="b vs a")
-    alone = DrawnLabels(seed=5, sets=(pair,), share=share, n_draws=10**6).reader()
-    both = DrawnLabels(seed=5, sets=(other, pair), share=share, n_draws=10**6).reader()
+    alone = DrawnLabels(seed=5, sets=(pair,), share=share, column=key_columns(arm), n_draws=10**6).reader()
+    both = DrawnLabels(seed=5, sets=(other, pair), share=share, column=key_columns(arm), n_draws=10**6).reader()
     for reader in (alone, both):
         reader.start(3)
         reader.advance(100)
@@ -160,4 +214,4 @@ def test_own_keys_of_a_pair_do_not_depend_on_other_pairs():
 
 
 def test_fresh_keys_have_an_address_that_no_other_stream_has():
-    assert not np.array_equal(KeyStream(9, (0, 1, 3, 0, 0, 3), 6).read(1), KeyStream(9, (0, 0, 3), 6).read(1))
+    assert not np.array_equal(KeyStream(9, (0, 0, 3, 1), 6).read(1), KeyStream(9, (0, 0, 3), 6).read(1))
