@@ -133,7 +133,7 @@ def judge_family(
     Enumerates instead of drawing where a job has one reference set with at most `exact_limit` relabellings.
     """
     sets = _reference_sets(design, spec)
-    if spec.exchange == "within-pair" and spec.across_pairs == "boole":
+    if spec.across_pairs == "boole" and not _is_whole(design, spec):
         groups = [((k,), (s,)) for k, s in enumerate(sets)]
     else:
         groups = [(tuple(range(len(spec.pairs))), sets)]
@@ -157,8 +157,13 @@ def judge_family(
     )
 
 
+def _is_whole(design: Design, spec: FamilySpec) -> bool:
+    """Return whether all arms are relabelled together; with two arms they are a pair in any case."""
+    return spec.exchange == "all-arms" and len(design.arms) > 2
+
+
 def _reference_sets(design: Design, spec: FamilySpec) -> tuple[ReferenceSet, ...]:
-    if spec.exchange == "all-arms":
+    if _is_whole(design, spec):
         return (whole_set(design.arm, design.cell, n_arms=len(design.arms), name="all arms"),)
     return tuple(
         pair_set(design.arm, design.cell, pair, name=f"{design.arms[pair[0]]} vs {design.arms[pair[1]]}")
@@ -181,7 +186,9 @@ def _run(design: Design, spec: FamilySpec, pairs, sets, *, n_jobs, report) -> _R
             n_draws=2**62,
         )
     strata = tuple(design.stratum[s.subjects] for s in sets)
-    job = build_job(_hypotheses(spec, pairs, sets, strata), labels=labels, strata=strata, two_sided=spec.two_sided)
+    job = build_job(
+        _hypotheses(design, spec, pairs, sets, strata), labels=labels, strata=strata, two_sided=spec.two_sided
+    )
     pilot = run_pilot(job)
     thresholds = set_thresholds(job, pilot)
 
@@ -206,7 +213,7 @@ def _run(design: Design, spec: FamilySpec, pairs, sets, *, n_jobs, report) -> _R
 
 def _shares(design: Design, spec: FamilySpec, pairs) -> np.ndarray:
     """Return each subject's mixing share; 1 where all arms are relabelled together or one pair is alone."""
-    if spec.exchange == "all-arms" or len(pairs) == 1:
+    if _is_whole(design, spec) or len(pairs) == 1:
         return np.ones(len(design.arm))
     _, cell = np.unique(design.cell, return_inverse=True)
     sizes = np.zeros((cell.max() + 1, len(design.arms)), dtype=int)
@@ -214,9 +221,9 @@ def _shares(design: Design, spec: FamilySpec, pairs) -> np.ndarray:
     return mixing_shares(sizes, tuple(spec.pairs[k] for k in pairs))[cell, design.arm]
 
 
-def _hypotheses(spec: FamilySpec, pairs, sets, strata) -> Hypotheses:
+def _hypotheses(design: Design, spec: FamilySpec, pairs, sets, strata) -> Hypotheses:
     """Return the hypotheses endpoint by endpoint, pair by pair; scores are made among the subjects of their set."""
-    all_arms = spec.exchange == "all-arms"
+    all_arms = _is_whole(design, spec)
     set_index = tuple(0 if all_arms else k for k in range(len(pairs)))
     scores = []
     for j, name in enumerate(spec.statistic):

@@ -6,9 +6,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from mtest.engine.panels import Panel, build_panel, compute_statistics, rounding_bound
+from mtest.engine.pair import PairPanel, build_pair_panel
+from mtest.engine.several import SeveralPanel, build_several_panel
 from mtest.relabel.sets import ReferenceSet
 from mtest.relabel.sources import DrawnLabels, EnumeratedLabels
+
+Panel = PairPanel | SeveralPanel
 
 CHUNK_ROWS = 256  # hypotheses computed together: their statistics for one batch of draws stay in the L2 cache
 L2_BYTES = 1 << 21  # working memory aimed at, a common L2 cache; measured in tests/bench
@@ -79,7 +82,7 @@ def build_job(
         observed=observed[order],
         signed=signed[order],
         bound=bound[order],
-        batch=_batch_size(len(pieces[0]), [len(s.subjects) for s in labels.sets]),
+        batch=_batch_size(len(pieces[0]), labels.sets, panels),
     )
 
 
@@ -90,33 +93,37 @@ def _panels(hypotheses: Hypotheses, chosen: np.ndarray, sets: tuple[ReferenceSet
         complete = bool(np.isfinite(hypotheses.scores[h]).all())
         key = (hypotheses.set_index[h], hypotheses.first[h], hypotheses.second[h], hypotheses.statistic[h], complete)
         groups.setdefault(key, []).append(row)
-    return [
-        build_panel(
-            np.stack([hypotheses.scores[chosen[row]] for row in rows]),
-            rows=np.array(rows),
-            statistic=statistic,
-            reference_set=sets[set_index],
-            set_index=set_index,
-            stratum=strata[set_index],
-            first=first,
-            second=second,
-        )
-        for (set_index, first, second, statistic, _), rows in sorted(groups.items())
-    ]
+    panels: list[Panel] = []
+    for (set_index, first, second, statistic, _), rows in sorted(groups.items()):
+        common = {
+            "rows": np.array(rows),
+            "statistic": statistic,
+            "reference_set": sets[set_index],
+            "set_index": set_index,
+            "stratum": strata[set_index],
+        }
+        scores = np.stack([hypotheses.scores[chosen[row]] for row in rows])
+        if len(sets[set_index].arms) == 2:
+            panels.append(build_pair_panel(scores, **common))
+        else:
+            panels.append(build_several_panel(scores, first=first, second=second, **common))
+    return panels
 
 
 def _observe(panels: list[Panel], n: int, sets: tuple[ReferenceSet, ...]) -> tuple[np.ndarray, np.ndarray]:
     """Return the signed statistics of the labels as they were, and their rounding bounds."""
     signed, bound = np.empty(n), np.empty(n)
     for panel in panels:
-        arm = sets[panel.set_index].arm
-        indicators = [(arm == k).astype(float)[None, :] for k in range(panel.n_arms - 1)]
-        signed[panel.rows] = compute_statistics(panel, indicators)[:, 0]
-        bound[panel.rows] = rounding_bound(panel, signed[panel.rows], indicators)
+        chosen = sets[panel.set_index]
+        indicators = [(chosen.arm == k).astype(float)[None, :] for k in range(len(chosen.arms) - 1)]
+        signed[panel.rows] = panel.compute(indicators)[:, 0]
+        bound[panel.rows] = panel.bound(signed[panel.rows], indicators)
     return signed, bound
 
 
-def _batch_size(rows: int, set_sizes: list[int]) -> int:
+def _batch_size(rows: int, sets: tuple[ReferenceSet, ...], panels: list[Panel]) -> int:
     """Return a power of two of draws whose statistics, sums and labels fit the cache."""
-    bytes_per_draw = 8 * (rows + 2 * rows / len(set_sizes) + 2 * max(set_sizes))
+    widest = max(len(s.subjects) for s in sets)
+    tallest = min(max(len(panel.stack) for panel in panels), 2 * CHUNK_ROWS)
+    bytes_per_draw = 8 * (rows + tallest + 1.5 * widest)
     return int(2 ** np.clip(np.floor(np.log2(L2_BYTES / bytes_per_draw)), 4, 10))

@@ -5,7 +5,6 @@ from __future__ import annotations
 import numpy as np
 
 from mtest.engine.job import Job
-from mtest.engine.panels import compute_statistics
 from mtest.engine.tally import Counter, Tally, Thresholds
 from mtest.relabel.keys import BLOCK_DRAWS
 
@@ -95,7 +94,7 @@ def _chunks(job: Job, reader, size: int, *, signed: bool):
         for panel in panels:
             if panel.set_index not in labels:
                 labels[panel.set_index] = reader.fill(panel.set_index)
-            statistics[panel.rows] = compute_statistics(panel, labels[panel.set_index])
+            statistics[panel.rows] = panel.compute(labels[panel.set_index])
         if job.two_sided and not signed:
             np.abs(statistics, out=statistics)
         yield slice(last - n_rows, last), statistics

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from math import comb
 
 import numpy as np
@@ -86,7 +87,7 @@ class DrawnReader:
 def _runs(columns: np.ndarray) -> list[tuple[slice, slice]]:
     """Return the pieces (to, from) in which neighbouring columns can be copied together; two for a pair of arms."""
     starts = np.concatenate([[0], np.flatnonzero(np.diff(columns) != 1) + 1, [len(columns)]]).tolist()
-    return [(slice(a, b), slice(int(columns[a]), int(columns[a]) + b - a)) for a, b in zip(starts[:-1], starts[1:])]
+    return [(slice(a, b), slice(int(columns[a]), int(columns[a]) + b - a)) for a, b in pairwise(starts)]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -91,8 +91,8 @@ def assemble(plan: Plan, folder: Path) -> tuple[Trial, dict[str, str]]:
                 *lone_arms(cells, arm, plan),
                 *(
                     warning
-                    for index, (endpoint, values) in enumerate(zip(plan.endpoint, observed))
-                    for warning in about_endpoint(index, endpoint, values, arm, plan)
+                    for endpoint, values in zip(plan.endpoint, observed)
+                    for warning in about_endpoint(endpoint, values, arm, plan)
                 ),
             ]
         ),

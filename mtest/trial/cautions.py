@@ -7,7 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from mtest.plan.records import Endpoint, Plan
-from mtest.plan.wording import item, shown
+from mtest.plan.wording import shown
 from mtest.trial.sources import ROWS_SHOWN, Table
 from mtest.trial.subjects import Cells
 
@@ -50,9 +50,9 @@ def lone_arms(cells: Cells, arm: np.ndarray, plan: Plan) -> Iterator[str]:
         yield f"{_sentence_list('set', small)} fewer than 2 subjects and {_verb(small)} nothing to the comparisons."
 
 
-def about_endpoint(index: int, endpoint: Endpoint, observed: np.ndarray, arm: np.ndarray, plan: Plan) -> Iterator[str]:
+def about_endpoint(endpoint: Endpoint, observed: np.ndarray, arm: np.ndarray, plan: Plan) -> Iterator[str]:
     """Yield warnings about one endpoint; `observed` is (subject,) float64 before missing values were filled."""
-    where = item("endpoint", index, endpoint.name)
+    where = f'Endpoint "{endpoint.name}"'
     seen = observed[~np.isnan(observed)]
     if len(seen) and (seen == seen[0]).all() and endpoint.kind != "binary":
         yield f"{where} is constant: every observed value is the same, so its p-values will be 1."

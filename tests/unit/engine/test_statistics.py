@@ -5,11 +5,11 @@ import pytest
 from scipy import stats
 from statsmodels.regression.linear_model import OLS
 
-from mtest.engine.constants import derive_constants
 from mtest.engine.job import Hypotheses, build_job
 from mtest.engine.kernel import run_pilot
-from mtest.engine.panels import build_panel, compute_statistics
-from mtest.engine.statistics import MANY, divide
+from mtest.engine.pair import build_pair_panel
+from mtest.engine.several import DENOMINATORS, build_several_panel, derive_constants
+from mtest.engine.statistics import divide
 from mtest.relabel.sets import pair_set, whole_set
 from mtest.relabel.sources import EnumeratedLabels
 from mtest.scores import SCORES
@@ -26,18 +26,17 @@ def statistic(name, y, arm, stratum, *, cell=None, labels=None):
     """Return the engine's statistic of arm 0 against arm 1, for the labels as they are or as given."""
     cell = stratum if cell is None else cell
     chosen = pair_set(arm, cell, (0, 1), name="pair")
-    panel = build_panel(
-        SCORES[name](y, stratum)[None, :],
+    order = chosen.subjects
+    panel = build_pair_panel(
+        SCORES[name](y, stratum)[None, order],
         rows=np.array([0]),
         statistic=name,
         reference_set=chosen,
         set_index=0,
-        stratum=stratum,
-        first=0,
-        second=1,
+        stratum=stratum[order],
     )
-    first = (arm if labels is None else labels) == 0
-    return compute_statistics(panel, [first.astype(float)[None, :]])[0, 0]
+    first = (arm if labels is None else labels)[order] == 0
+    return panel.compute([first.astype(float)[None, :]])[0, 0]
 
 
 def one(n=N):
@@ -147,17 +146,16 @@ def test_unscaled_difference_with_strata_is_precision_weighted():
     assert statistic("unscaled difference", Y, ARM, STRATUM) == pytest.approx(expected, rel=1e-12)
 
 
-@pytest.mark.parametrize("y", [Y, MISSING], ids=["complete", "missing"])
 @pytest.mark.parametrize("name", ["welch", "pooled", "difference", "unscaled difference", "rank"])
-@pytest.mark.parametrize("strata", [False, True], ids=["one stratum", "strata"])
+@pytest.mark.parametrize(("y", "strata"), [(Y, False), (MISSING, False), (Y, True)], ids=["plain", "missing", "strata"])
 def test_the_form_for_several_arms_given_two_equals_the_pair_s(name, y, strata):
     stratum = STRATUM if strata else one()
     chosen = whole_set(ARM, stratum, n_arms=2, name="all arms")
-    scores = SCORES[name](y, stratum)[None, :]
-    constants = derive_constants(scores, reference_set=chosen, stratum=stratum, first=0, second=1)
+    arm, scores = ARM[chosen.subjects], SCORES[name](y, stratum)[None, chosen.subjects]
+    constants = derive_constants(scores, reference_set=chosen, stratum=stratum[chosen.subjects], first=0, second=1)
     x, present = np.nan_to_num(scores[0]), np.isfinite(scores[0])
-    s, s2, m = ([np.array([[v[ARM == k].sum()]]) for k in (0, 1)] for v in (x, x**2, present.astype(float)))
-    den2 = MANY[name](0, 1, s, s2, m, constants)
+    s, s2, m = ([np.array([[v[arm == k].sum()]]) for k in (0, 1)] for v in (x, x**2, present.astype(float)))
+    den2 = DENOMINATORS[name](0, 1, s, s2, m, constants)
     general = (s[0] / m[0] - s[1] / m[1] - constants.mu) / np.sqrt(den2)
     assert general[0, 0] == pytest.approx(statistic(name, y, ARM, stratum), rel=1e-10)
 
@@ -165,7 +163,7 @@ def test_the_form_for_several_arms_given_two_equals_the_pair_s(name, y, strata):
 def test_all_arms_pooled_t_uses_the_variance_of_every_arm():
     arm = np.repeat([0, 1, 2], 8)
     chosen = whole_set(arm, one(), n_arms=3, name="all arms")
-    panel = build_panel(
+    panel = build_several_panel(
         SCORES["pooled"](Y, one())[None, :],
         rows=np.array([0]),
         statistic="pooled",
@@ -178,7 +176,7 @@ def test_all_arms_pooled_t_uses_the_variance_of_every_arm():
     indicators = [(arm == k).astype(float)[None, :] for k in (0, 1)]
     within = sum(((Y[arm == k] - Y[arm == k].mean()) ** 2).sum() for k in range(3)) / 21
     expected = (Y[arm == 2].mean() - Y[arm == 0].mean()) / np.sqrt(within * (2 / 8))
-    assert compute_statistics(panel, indicators)[0, 0] == pytest.approx(expected, rel=1e-12)
+    assert panel.compute(indicators)[0, 0] == pytest.approx(expected, rel=1e-12)
 
 
 def test_nothing_over_nothing_is_0():
@@ -203,6 +201,6 @@ def test_divide_keeps_ordinary_rows_beside_zero_ones():
     result = divide(
         np.array([[1.0, -2.0, 0.0], [3.0, 3.0, 3.0]]),
         np.array([[0.0, 1e-20, 0.0], [4.0, 9.0, 0.0]]),
-        floor=np.array([[1e-12], [1e-12]]),
+        usual=np.array([[1.0], [1.0]]),
     )
     assert result.tolist() == [[np.inf, -np.inf, 0.0], [1.5, 1.0, np.inf]]

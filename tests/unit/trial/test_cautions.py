@@ -12,23 +12,22 @@ WARNINGS = {
             "plan": (('value = "sleep"\nlevels = ["good", "fair", "poor"]', 'value = "block"'),),
             "subjects": ((",2,2.0", ",1,2.0"), (",2,2.0", ",1,2.0")),
         },
-        'endpoint[2] "Sleep" is constant: every observed value is the same, so its p-values will be 1.',
+        'Endpoint "Sleep" is constant: every observed value is the same, so its p-values will be 1.',
     ),
     "nobody with the event": (
         {"subjects": tuple((old, old.replace("1", "0")) for old in ("fair,1", "poor,1", "fair,1", "poor,1", "poor,1"))},
-        'endpoint[3] "Rash" is constant: nobody had the event, so its p-values will be 1.',
+        'Endpoint "Rash" is constant: nobody had the event, so its p-values will be 1.',
     ),
     "event never seen": (
         {
             "plan": (('value = "rash"', 'value = "rash"\nevent = "yes"'),),
             "subjects": ((",0,Y", ",1,Y"), (",0,N", ",1,N"), (",0,Y", ",1,Y")),
         },
-        "endpoint[3] \"Rash\": the event 'yes' never occurs in the data, so its p-values will be 1; check its "
-        "spelling.",
+        "Endpoint \"Rash\": the event 'yes' never occurs in the data, so its p-values will be 1; check its spelling.",
     ),
     "few events": (
         {"subjects": (("fair,1", "fair,0"),)},
-        'endpoint[3] "Rash" has 4 events in all; with fewer than 5 a small p-value is hardly possible.',
+        'Endpoint "Rash" has 4 events in all; with fewer than 5 a small p-value is hardly possible.',
     ),
     "stratum with one arm": (
         {"subjects": (("003,vehicle,A,F", "003,vehicle,A,M"),)},
@@ -56,11 +55,11 @@ WARNINGS = {
     ),
     "much missing": (
         {"visits": (("-11", ""), ("-12.5", ""))},
-        'endpoint[1] "Pain" is missing for 25% of all subjects (2 of 8).',
+        'Endpoint "Pain" is missing for 25% of all subjects (2 of 8).',
     ),
     "missing apart": (
         {"visits": (("-11", ""),)},
-        "endpoint[1] \"Pain\" is missing more often in arm 'gel' (25%) than in arm 'vehicle' (0%); the missingness may "
+        "Endpoint \"Pain\" is missing more often in arm 'gel' (25%) than in arm 'vehicle' (0%); the missingness may "
         "depend on the arm.",
     ),
     "white space": (
@@ -85,7 +84,7 @@ def test_missing_values_that_the_rule_fills_are_still_warned_of(study):
         plan=(('value = "rash"', 'value = "rash"\nmissing = "worst-score"'),),
         subjects=(("good,0,Y", "good,,Y"), ("poor,1,Y", "poor,,Y")),
     )
-    assert any('endpoint[3] "Rash" is missing' in warning for warning in trial.warnings)
+    assert any('Endpoint "Rash" is missing' in warning for warning in trial.warnings)
 
 
 def test_at_most_five_cells_are_named(study, sound_files):
