@@ -17,11 +17,12 @@ def divide(numerator: np.ndarray, den2: np.ndarray, *, usual: np.ndarray | float
     usual : broadcastable
         The usual size of den2, the yardstick for what counts as zero; 0 where den2 cannot vanish.
     """
-    floor = ZERO_SHARE * usual
-    zero = den2 <= floor
-    if not zero.any():
+    floor = ZERO_SHARE * np.atleast_2d(usual)
+    # Only the smallest denominator of a row is looked at: comparing all of them would cost as much as their roots.
+    if np.all(den2.min(axis=1, keepdims=True) > np.max(floor, axis=-1, keepdims=True)):
         np.sqrt(den2, out=den2)
         return np.divide(numerator, den2, out=numerator)
+    zero = den2 <= floor
     limit = np.where(np.abs(numerator) <= np.sqrt(floor), 0.0, np.copysign(np.inf, numerator))
     den2[zero] = 1.0
     np.sqrt(den2, out=den2)

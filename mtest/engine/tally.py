@@ -97,6 +97,12 @@ class Counter:
         count, near = self._thresholds.count[rows, None], self._thresholds.near[rows, None]
         tally = self.tally
         _count_rows(statistics, count, near, tally.raw[rows], tally.raw_near[rows])
+        if running.min() >= count.max():
+            # In every draw something below already reaches all thresholds of the chunk: common in large families.
+            tally.step[rows] += len(running)
+            tally.step_near[rows] += len(running)
+            np.maximum(running, statistics.max(axis=0), out=running)
+            return
         below = running
         # Rows are contiguous over draws, so each maximum runs at memory speed; accumulate along axis 0 does not.
         for row in statistics[::-1]:
@@ -116,10 +122,13 @@ class Counter:
 
 def _count_rows(statistics, count, near, counts: np.ndarray, near_counts: np.ndarray) -> None:
     """Add each row's number of draws at or above its two thresholds."""
-    numbers = np.sum(statistics >= count, axis=1)
+    numbers = _true_per_row(statistics >= count)
     counts += numbers
     nearly = statistics >= near
     # Near ties are rare: one count over all rows mostly shows that there are none.
-    if np.count_nonzero(nearly) != numbers.sum():
-        numbers = np.sum(nearly, axis=1)
-    near_counts += numbers
+    near_counts += numbers if np.count_nonzero(nearly) == numbers.sum() else _true_per_row(nearly)
+
+
+def _true_per_row(flags: np.ndarray) -> np.ndarray:
+    """Return (row,) the number of true flags; eight to a byte, several times faster than summing them."""
+    return np.bitwise_count(np.packbits(flags, axis=1)).sum(axis=1, dtype=np.int64)
