@@ -34,6 +34,15 @@ class JointResult:
     n_draws : relabellings enumerated or drawn
     n_distinct : (reference set, number of distinct relabellings) pairs
     control : which error rate the step-down p-values control, and under which assumption
+
+    Examples
+    --------
+    >>> import mtest
+    >>> result = mtest.joint_test([1.0, 2.0, 8.0, 9.0], ["a", "a", "b", "b"])
+    >>> result.n_distinct
+    (('b vs a', 6),)
+    >>> result.control[:60]
+    'Familywise error rate, strong control across endpoints, exac'
     """
 
     table: pd.DataFrame
@@ -288,6 +297,15 @@ class Analysis:
     """A plan carried out.
 
     result : everything that came out, as records
+
+    Examples
+    --------
+    >>> import mtest, tempfile, pathlib
+    >>> analysis = mtest.analyse(mtest.read_plan("configs/matched-sites.toml"), n_jobs=1)
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     analysis.write(pathlib.Path(folder) / "bundle")
+    ...     sorted(path.name for path in (pathlib.Path(folder) / "bundle").iterdir())[:2]
+    ['manifest.json', 'null.npz']
     """
 
     result: AnalysisResult
@@ -328,8 +346,11 @@ def analyse(plan: PlanFile, *, n_jobs: int = 0) -> Analysis:
     Examples
     --------
     >>> import mtest
-    >>> analysis = mtest.analyse(mtest.read_plan("configs/matched-sites.toml"))  # doctest: +SKIP
-    >>> analysis.table[["endpoint", "p_adjusted"]]  # doctest: +SKIP
+    >>> analysis = mtest.analyse(mtest.read_plan("configs/matched-sites.toml"), n_jobs=1)
+    >>> analysis.result.families[0].n_draws
+    1024
+    >>> [round(1024 * p) for p in analysis.table["p_unadjusted"][:2]]
+    [4, 4]
     """
     if not isinstance(plan, PlanFile):
         raise UsageError(f"plan must come from mtest.read_plan(path); got {type(plan).__name__}.")

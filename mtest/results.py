@@ -165,7 +165,14 @@ class AnalysisResult:
 
 
 def to_dict(record: object) -> dict:
-    """Return a record as plain dicts, lists, numbers and text, safe for JSON but for NaN and infinity."""
+    """Return a record as plain dicts, lists, numbers and text, safe for JSON but for NaN and infinity.
+
+    Examples
+    --------
+    >>> edges, counts = np.array([0.0, 1.0, np.inf]), np.array([95, 5])
+    >>> to_dict(NullDistribution(edges=edges, counts=counts, critical=1.0))
+    {'edges': [0.0, 1.0, inf], 'counts': [95, 5], 'critical': 1.0}
+    """
     return _plain(asdict(record))  # type: ignore[call-overload]
 
 

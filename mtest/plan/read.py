@@ -42,6 +42,11 @@ def read_plan(path: str | Path) -> PlanFile:
     ------
     PlanError
         If the file cannot be read, is not TOML, or breaks a rule of a plan: every fault at once, a sentence each.
+
+    Examples
+    --------
+    >>> read_plan("configs/matched-sites.toml").plan.randomisation.scheme
+    'matched sets'
     """
     path = Path(path)
     raw = _bytes(path)
