@@ -183,7 +183,7 @@ def _run(design: Design, spec: FamilySpec, pairs, sets, *, n_jobs, report) -> _R
             sets=sets,
             share=_shares(design, spec, pairs),
             column=key_columns(design.arm),
-            n_draws=2**62,
+            n_draws=spec.at_most,
         )
     strata = tuple(design.stratum[s.subjects] for s in sets)
     job = build_job(
@@ -202,8 +202,7 @@ def _run(design: Design, spec: FamilySpec, pairs, sets, *, n_jobs, report) -> _R
     tally = run_job(
         job,
         thresholds,
-        at_least=spec.at_least,
-        at_most=spec.at_most,
+        at_least=labels.n_draws if exact else spec.at_least,
         settled=settled,
         n_jobs=n_jobs,
         report=report,

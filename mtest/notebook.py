@@ -90,7 +90,7 @@ def joint_test(
     across_pairs : "joint" or "boole", optional
         None: "boole" for one-sided tests of pairs without a common reference, else "joint".
     draws : int
-        Relabellings drawn, rounded up to whole blocks of 1024; unused where enumerated.
+        Relabellings drawn; unused where enumerated.
     seed : int
         Same seed, same digits, for any `n_jobs`.
     exact_limit : int

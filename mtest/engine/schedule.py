@@ -45,7 +45,6 @@ def run_job(
     thresholds: Thresholds,
     *,
     at_least: int,
-    at_most: int,
     settled: Callable[[Tally], bool],
     n_jobs: int = 1,
     report: Callable[[Progress], None] | None = None,
@@ -54,8 +53,8 @@ def run_job(
 
     Parameters
     ----------
-    at_least, at_most : int
-        Draws before the first look, and at the end. Rounded up to whole blocks. Ignored where labels are enumerated.
+    at_least : int
+        Draws before the first look, rounded up to whole blocks; the last is at all the draws the labels have.
     settled : callable
         Given the tally at a round's border: may the run stop?
     n_jobs : int
@@ -63,7 +62,7 @@ def run_job(
     report : callable
         Called after every finished task.
     """
-    rounds = [job.labels.n_draws] if not hasattr(job.labels, "seed") else list(_rounds(at_least, at_most))
+    rounds = list(_rounds(at_least, job.labels.n_draws))
     total = empty_tally(thresholds)
     workers = n_jobs or os.cpu_count() or 1
     first = 0
@@ -81,17 +80,15 @@ def run_job(
 
 
 def _rounds(at_least: int, at_most: int) -> Iterator[int]:
-    """Yield the draws after each round, in whole blocks."""
-    draws = whole_blocks(at_least)
-    end = whole_blocks(at_most)
-    while draws < end:
+    """Yield the draws after each round: whole blocks, but for the last."""
+    draws = _whole_blocks(at_least)
+    while draws < at_most:
         yield draws
-        draws = min(whole_blocks(int(draws * _GROWTH)), end)
-    yield end
+        draws = _whole_blocks(int(draws * _GROWTH))
+    yield at_most
 
 
-def whole_blocks(draws: int) -> int:
-    """Return the number of draws rounded up to whole blocks."""
+def _whole_blocks(draws: int) -> int:
     return -(-draws // BLOCK_DRAWS) * BLOCK_DRAWS
 
 
@@ -100,8 +97,9 @@ def _run_blocks(job, thresholds, first: int, last: int, *, workers: int) -> Iter
     if first >= last:
         return
     started = time.perf_counter()
-    yield tally_blocks(job, thresholds, first, first + 1)
+    tally = tally_blocks(job, thresholds, first, first + 1)
     seconds = time.perf_counter() - started
+    yield tally
     left = last - first - 1
     per_task = max(1, min(round(_TASK_SECONDS / max(seconds, 1e-6)), -(-left // workers)))
     ranges = [(i, min(i + per_task, last)) for i in range(first + 1, last, per_task)]
