@@ -7,13 +7,12 @@ from itertools import combinations
 
 import numpy as np
 
-from mtest.adjust.control import control_statement
 from mtest.adjust.pvalues import adjust_from_p
 from mtest.engine.schedule import Progress
 from mtest.estimate.describe import describe
 from mtest.estimate.effects import estimate_effects
 from mtest.estimate.model_test import model_p
-from mtest.family import Design, FamilySpec, FamilyTest, default_across_pairs, judge_family
+from mtest.family import Design, FamilySpec, FamilyTest, default_across_pairs, judge_family, state_control
 from mtest.machine import run_facts
 from mtest.plan.read import PlanFile
 from mtest.plan.records import Family, Plan
@@ -113,14 +112,7 @@ def _run_family(plan: Plan, trial: Trial, family: Family, *, n_jobs: int, report
         n_draws=test.n_draws,
         n_distinct=test.n_distinct,
         smallest_p=test.smallest_p,
-        control=control_statement(
-            procedure=family.procedure,
-            exchange=spec.exchange,
-            across_pairs=spec.across_pairs,
-            n_pairs=len(spec.pairs),
-            exact=test.exact,
-            studentised=all(name == "welch" for name in spec.statistic),
-        ),
+        control=state_control(design, spec, test),
         hypotheses=hypotheses,
         counts=tuple(test.counts.items()),
         null=test.null,
@@ -253,6 +245,11 @@ def _family_warnings(hypotheses: tuple[HypothesisResult, ...], test: FamilyTest,
         found.append(
             "A decision depends on draws that fall short of the observed statistic by less than a thousand rounding "
             f"tolerances: {'; '.join(hanging)}. Check the precision of the data."
+        )
+    idle = [f"{h.endpoint}, {h.arm} vs {h.reference}" for h in hypotheses if np.isnan(h.effect.estimate)]
+    if idle:
+        found.append(
+            f"Nothing is compared, since no stratum has data in both arms: {'; '.join(idle)}. Such a p-value is 1."
         )
     if test.smallest_p > alpha:
         found.append(

@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from mtest.adjust.control import WhatWasRun, control_statement, has_common_reference
 from mtest.adjust.maxt import across_pairs_single_step, across_pairs_step_down, step_down
 from mtest.adjust.montecarlo import confidence_sequence, p_from_counts
 from mtest.adjust.pvalues import adjust_from_p
@@ -118,8 +119,24 @@ class _Run:
 
 def default_across_pairs(*, two_sided: bool, pairs: tuple[tuple[int, int], ...]) -> str:
     """Return how pairs are joined unless the user says so: one-sided tests without a common reference take Boole."""
-    common_reference = len({b for _, b in pairs}) == 1
-    return "joint" if two_sided or common_reference else "boole"
+    return "joint" if two_sided or has_common_reference(pairs) else "boole"
+
+
+def state_control(design: Design, spec: FamilySpec, test: FamilyTest) -> str:
+    """Return the control statement of a family that was judged."""
+    return control_statement(
+        WhatWasRun(
+            procedure=spec.procedure,
+            exchange=spec.exchange,
+            across_pairs=spec.across_pairs,
+            pairs=spec.pairs,
+            n_arms=len(design.arms),
+            two_sided=spec.two_sided,
+            exact=test.exact,
+            stratified=len(np.unique(design.stratum)) > 1,
+            statistics=spec.statistic,
+        )
+    )
 
 
 def judge_family(
@@ -228,6 +245,8 @@ def _hypotheses(design: Design, spec: FamilySpec, pairs, sets, strata) -> Hypoth
     for j, name in enumerate(spec.statistic):
         sign = 1 if spec.two_sided else spec.sign[j]
         per_set = [sign * SCORES[name](spec.values[s.subjects, j], strata[i]) for i, s in enumerate(sets)]
+        if name != "unscaled difference":
+            per_set = [_rescale(x) for x in per_set]
         scores += [per_set[i] for i in set_index]
     repeat = len(spec.statistic)
     return Hypotheses(
@@ -237,6 +256,12 @@ def _hypotheses(design: Design, spec: FamilySpec, pairs, sets, strata) -> Hypoth
         first=tuple(spec.pairs[k][0] if all_arms else 0 for k in pairs) * repeat,
         second=tuple(spec.pairs[k][1] if all_arms else 1 for k in pairs) * repeat,
     )
+
+
+def _rescale(scores: np.ndarray) -> np.ndarray:
+    """Return scores over a power of two near their largest size: exact, and squares neither vanish nor overflow."""
+    largest = np.nanmax(np.abs(scores), initial=0.0)
+    return np.ldexp(scores, -np.frexp(largest)[1]) if largest > 0 else scores
 
 
 def _adjust(spec: FamilySpec, runs: list[_Run]) -> dict[str, Any]:

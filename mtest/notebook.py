@@ -11,12 +11,11 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from mtest.adjust.control import control_statement
 from mtest.analyse import run_plan
 from mtest.bundle.write import results_table, write_bundle
 from mtest.errors import DataError, UsageError
 from mtest.estimate.effects import estimate_effects
-from mtest.family import Design, FamilySpec, FamilyTest, default_across_pairs, judge_family
+from mtest.family import Design, FamilySpec, FamilyTest, default_across_pairs, judge_family, state_control
 from mtest.plan.read import PlanFile
 from mtest.results import AnalysisResult
 from mtest.scores import SCORES
@@ -171,14 +170,7 @@ def joint_test(
         exact=test.exact,
         n_draws=test.n_draws,
         n_distinct=test.n_distinct,
-        control=control_statement(
-            procedure=spec.procedure,
-            exchange=exchange,
-            across_pairs=across,
-            n_pairs=len(pairs),
-            exact=test.exact,
-            studentised=all(name in ("welch",) for name in statistics),
-        ),
+        control=state_control(design, spec, test),
     )
 
 

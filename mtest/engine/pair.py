@@ -148,9 +148,10 @@ class PairPanel:
         if self.mu is not None:
             numerator -= self.mu
         result = divide(numerator, den2, usual=self._usual(w))
-        if self.coefficients is None:
-            # No stratum holds both arms: nothing is compared.
-            result[w < 1e-9] = 0.0
+        # Where no stratum holds both arms nothing is compared, and what is left of S is rounding.
+        idle = w < 1e-9
+        if idle.any():
+            result[np.broadcast_to(idle, result.shape)] = 0.0
         return result
 
     def bound(self, observed: np.ndarray, indicators: list[np.ndarray]) -> np.ndarray:

@@ -4,7 +4,8 @@ D = S_a/m_a - S_b/m_b is the difference of two arms' mean scores, scores being c
 statistic is (D - mu) / sqrt(den2). The constants are functions of who is available, of the strata and of the arm
 sizes, never of the labels; where the number available in an arm and stratum varies with the labels, its expectation is
 used in them (available * arm share), so that with missing values in strata the statistic is near the textbook's, not
-equal to it.
+equal to it. Where arms have unequal shares of the strata, a third arm's effect enters D through the stratum means: the
+relabelling is exact when no arm differs, and says nothing sure about a pair otherwise.
 """
 
 from __future__ import annotations

@@ -84,7 +84,7 @@ def _counting(facts: ReportFacts) -> tuple[str, ...]:
         parts.append(
             f"Relabellings are drawn from seed {run.seed} (generator: {run.generator}) in blocks of "
             f"{formats.format_count(run.block_draws)}; draw r is the same whatever the number of processes. One draw "
-            "serves every endpoint and every comparison. With S draws of B at least as extreme as the observed data, "
+            "serves every endpoint. With S draws of B at least as extreme as the observed data, "
             "p = (1 + S) / (1 + B) (Phipson & Smyth 2010), which is never zero. Drawing goes on from "
             f"{formats.format_count(run.draws_at_least)} up to {formats.format_count(run.draws_at_most)} draws until "
             "every decision is settled: until the confidence sequence of each adjusted p (Robbins 1970), which stays "

@@ -25,7 +25,8 @@ PROCEDURES: dict[str, tuple[str, str]] = {
 SCHEMES: dict[str, str] = {
     "complete": "complete randomisation: labels are exchanged among all subjects, with the arm sizes as they were",
     "stratified": "stratified randomisation: labels are exchanged within strata only, as randomised",
-    "blocks": "randomisation in blocks: labels are exchanged within blocks only",
+    "blocks": "randomisation in blocks: labels are exchanged within blocks only; t statistics are taken about their mean "
+    "over relabellings, which is not 0 where blocks have unequal ratios",
     "matched sets": "randomisation within matched sets: labels are exchanged within sets only",
 }
 
@@ -37,8 +38,8 @@ EXCHANGE: dict[str, str] = {
 }
 
 ACROSS_PAIRS: dict[str, str] = {
-    "joint": "One random key for each subject drives every comparison at once, so comparisons that share an arm move "
-    "together as they do in the study.",
+    "joint": "Comparisons that share an arm share random keys of its subjects: all of them where the arms have equal "
+    "sizes, else as many as keep comparisons from moving together more closely than they do in the study.",
     "boole": "Comparisons are combined by Boole's inequality, step by step, each with its own relabellings; this holds "
     "whatever the dependence between them.",
 }

@@ -236,6 +236,31 @@ def test_boole_uses_the_same_draws_as_joint():
     assert np.array_equal(joint.table["p_unadjusted"], boole.table["p_unadjusted"])
 
 
+@pytest.mark.parametrize("statistic", [*STATISTICS, "unscaled difference"])
+@pytest.mark.parametrize("exact_limit", [0, 10**6])
+def test_arms_that_share_no_stratum_are_not_compared_and_harm_no_one(statistic, exact_limit):
+    """What is left of their sum is rounding: the statistic is 0, p is 1, and other hypotheses keep their p-values."""
+    rng = np.random.default_rng(0)
+    x = rng.normal(size=60)
+    arm, site = np.array(["v", "a"] * 20 + ["c"] * 20), np.repeat([0, 1, 2], 20)
+    x[arm == "a"] += 3
+    table = mtest.joint_test(
+        x, arm, reference="v", strata=site, statistic=statistic, draws=1024, exact_limit=exact_limit
+    ).table.set_index("arm")
+    assert table.loc["c", ["statistic", "p_unadjusted", "p_step_down"]].tolist() == [0.0, 1.0, 1.0]
+    assert np.isnan(table.loc["c", "estimate"])
+    assert table.loc["a", "p_single_step"] == table.loc["a", "p_unadjusted"] < 0.01
+
+
+@pytest.mark.parametrize("scale", [1e-170, 1e-300])
+@pytest.mark.parametrize("statistic", STATISTICS)
+def test_very_small_numbers_are_numbers(scale, statistic):
+    rng = np.random.default_rng(1)
+    outcomes, arm = rng.normal(size=(20, 2)), np.repeat(["a", "b"], 10)
+    plain, tiny = (mtest.joint_test(x, arm, statistic=statistic, draws=999) for x in (outcomes, outcomes * scale))
+    assert np.array_equal(counts(plain), counts(tiny))
+
+
 def test_nothing_is_warned_about():
     with warnings.catch_warnings():
         warnings.simplefilter("error")
