@@ -96,7 +96,9 @@ def _run_family(plan: Plan, trial: Trial, family: Family, *, n_jobs: int, report
     holm = adjust_from_p(test.p_unadjusted, procedure="Holm")
     keys = [(j, pair) for j in range(len(endpoints)) for pair in spec.pairs]
     hypotheses = tuple(
-        _hypothesis(trial, family, spec, test, holm, h, endpoints[j], spec.values[:, j], pair, in_set)
+        _hypothesis(
+            trial, family, spec=spec, test=test, p_holm=holm[h], h=h, endpoint=endpoints[j], pair=pair, in_set=in_set
+        )
         for h, (j, pair) in enumerate(keys)
     )
     return FamilyResult(
@@ -171,18 +173,18 @@ def _comparisons_in_words(plan: Plan, family: Family) -> str:
 def _hypothesis(
     trial: Trial,
     family: Family,
+    *,
     spec: FamilySpec,
     test: FamilyTest,
-    holm: np.ndarray,
+    p_holm: float,
     h: int,
     endpoint: EndpointData,
-    values: np.ndarray,
     pair: tuple[int, int],
     in_set: np.ndarray,
 ) -> HypothesisResult:
     """Return hypothesis number h: its p-values from the family's test, its effects from the pair's own data."""
     inside = np.isin(trial.arm, pair) & in_set
-    x, in_arm, stratum = values[inside], trial.arm[inside] == pair[0], trial.stratum[inside]
+    x, in_arm, stratum = endpoint.values[inside], trial.arm[inside] == pair[0], trial.stratum[inside]
     seen = describe(x, in_arm)
     effects = estimate_effects(
         endpoint.kind, endpoint.statistic, values=x, in_arm=in_arm, stratum=stratum, better=endpoint.better
@@ -217,7 +219,7 @@ def _hypothesis(
         p_unadjusted=float(test.p_unadjusted[h]),
         p_single_step=float(test.p_single_step[h]),
         p_step_down=float(test.p_step_down[h]),
-        p_holm=float(holm[h]),
+        p_holm=float(p_holm),
         p_adjusted=float(test.p_adjusted[h]),
         p_adjusted_low=float(test.low[h]),
         p_adjusted_high=float(test.high[h]),

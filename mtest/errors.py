@@ -4,7 +4,7 @@
     ├── PlanError          exit code 2   the analysis plan breaks a rule
     ├── UsageError         exit code 2   a call or a command breaks a rule
     ├── DataError          exit code 3   the data break a rule
-    └── NumericError       exit code 4   a result cannot be trusted, or is not settled where the plan demands it
+    └── NumericError       exit code 4   a number is not what it was promised to be
 
 Every message is one sentence a fault: *where: rule; got; do.*
 """
@@ -47,6 +47,6 @@ class DataError(MtestError):
 
 
 class NumericError(MtestError):
-    """A number cannot be computed to the standard promised."""
+    """A number is not what it was promised to be: a replay that finds another count."""
 
     exit_code = 4

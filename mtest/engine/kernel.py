@@ -20,13 +20,10 @@ def tally_blocks(job: Job, thresholds: Thresholds, first: int, last: int) -> Tal
     counter = Counter(thresholds)
     reader = job.labels.reader()
     for block in range(first, last):
-        for chunks in _batches(job, reader, block):
-            running: np.ndarray | None = None
+        for size, chunks in _batches(job, reader, block):
+            running = np.full(size, -np.inf)
             for rows, statistics in chunks:
-                if running is None:
-                    running = np.full(statistics.shape[1], -np.inf)
                 counter.count_chunk(statistics, running, rows)
-            assert running is not None
             counter.close_batch(running)
     return counter.tally
 
@@ -42,11 +39,11 @@ def run_pilot(job: Job) -> np.ndarray:
     done = 0
     reader = job.labels.reader()
     for block in range(_PILOT_BLOCKS):
-        for chunks in _batches(job, reader, block, signed=True):
+        for size, chunks in _batches(job, reader, block, signed=True):
             if done >= wanted:
                 return pilot
+            width = min(size, wanted - done)
             for rows, statistics in chunks:
-                width = min(statistics.shape[1], wanted - done)
                 pilot[rows, done : done + width] = statistics[:, :width]
             done += width
     return pilot
@@ -74,7 +71,7 @@ def _span(reach: np.ndarray) -> tuple[float, float]:
 
 
 def _batches(job: Job, reader, block: int, *, signed: bool = False):
-    """Yield a batch of draws at a time, as an iterator of (rows, statistics), the smallest observed ones first."""
+    """Yield batches of draws: how many, and an iterator of (rows, statistics), the smallest observed ones first."""
     draws = min(BLOCK_DRAWS, job.labels.n_draws - block * BLOCK_DRAWS)
     if draws <= 0:
         return
@@ -82,7 +79,7 @@ def _batches(job: Job, reader, block: int, *, signed: bool = False):
     for start in range(0, draws, job.batch):
         size = min(job.batch, draws - start)
         reader.advance(size)
-        yield _chunks(job, reader, size, signed=signed)
+        yield size, _chunks(job, reader, size, signed=signed)
 
 
 def _chunks(job: Job, reader, size: int, *, signed: bool):

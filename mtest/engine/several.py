@@ -137,12 +137,12 @@ def pooled(first, second, sums, sums2, m, c: Constants):
 
 def standardised(first, second, sums, sums2, m, c: Constants):
     """Return den2 of D over its relabelling SD."""
-    return c.v * (1 / m[first] + 1 / m[second]) + 0 * sums[0]
+    return np.broadcast_to(c.v * (1 / m[first] + 1 / m[second]), sums[0].shape).copy()
 
 
 def unscaled(first, second, sums, sums2, m, c: Constants):
     """Return den2 of the plain difference."""
-    return c.h**2 + 0 * sums[0]
+    return np.broadcast_to(c.h**2, sums[0].shape).copy()
 
 
 DENOMINATORS = {

@@ -13,8 +13,8 @@ class ReferenceSet:
     """Subjects whose arm labels are exchanged, within cells, with the arm sizes of each cell kept.
 
     name : for messages and tables, e.g. "4 % vs vehicle"
-    code : the set's own address among the key streams: the place of each arm's first subject, so that neither the
-        names nor the order of arms change a draw
+    code : the set's own address among the key streams: the place of each arm's first subject, so that the names and
+        the order of arms change no draw of the same (tested, reference) pair
     arms : indices of the arms in the study; the first gets the lowest keys
     subjects : (subject,) intp, positions among the study's subjects, arm by arm as in `key_columns`
     arm : (subject,) intp, index into `arms`

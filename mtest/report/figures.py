@@ -270,8 +270,8 @@ def _marker(axes: Axes, x: float, y: float, h: HypothesisFacts) -> None:
 
 def _as_compared(h: HypothesisFacts, alternative: str) -> float:
     """The statistic as the maximum sees it: without its sign, or counting upwards in the tested arm's favour."""
-    size = abs(h.raw.statistic_value)
-    return -size if alternative == "better" and h.direction == "worse" else size
+    value = h.raw.statistic_value
+    return (value if h.raw.better == "higher" else -value) if alternative == "better" else abs(value)
 
 
 def _coarser(share: np.ndarray, edges: np.ndarray, most: int = 120) -> tuple[np.ndarray, np.ndarray]:

@@ -97,7 +97,8 @@ def _counting(facts: ReportFacts) -> tuple[str, ...]:
         )
     parts.append(
         "“At least as extreme” allows for rounding in the last bits: a statistic counts when it is no more than 1e-9 "
-        "of that statistic's spread below the observed one."
+        "of that statistic's spread below the observed one, or no more than rounding can explain where two arms hardly "
+        "overlap."
     )
     return tuple(parts)
 

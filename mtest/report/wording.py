@@ -25,8 +25,8 @@ PROCEDURES: dict[str, tuple[str, str]] = {
 SCHEMES: dict[str, str] = {
     "complete": "complete randomisation: labels are exchanged among all subjects, with the arm sizes as they were",
     "stratified": "stratified randomisation: labels are exchanged within strata only, as randomised",
-    "blocks": "randomisation in blocks: labels are exchanged within blocks only; t statistics are taken about their mean "
-    "over relabellings, which is not 0 where blocks have unequal ratios",
+    "blocks": "randomisation in blocks: labels are exchanged within blocks only; t statistics are taken about their "
+    "mean over relabellings, which is not 0 where blocks have unequal ratios",
     "matched sets": "randomisation within matched sets: labels are exchanged within sets only",
 }
 

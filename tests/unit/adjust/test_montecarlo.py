@@ -51,3 +51,8 @@ def test_the_sequence_holds_at_all_looks_at_once():
 def test_many_draws_narrow_the_sequence():
     low, high = confidence_sequence(np.array([5_000]), 100_000)
     assert 0.046 < low[0] < 0.05 < high[0] < 0.054
+
+
+def test_the_sequence_of_the_report_misses_once_in_a_hundred():
+    counts = np.array([0, 3, 60])
+    assert np.array_equal(confidence_sequence(counts, 1000), confidence_sequence(counts, 1000, error=0.01))

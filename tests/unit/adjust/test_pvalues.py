@@ -35,3 +35,10 @@ def test_a_value_that_is_no_p_value_is_refused(bad):
 def test_holm_is_that_of_statsmodels(seed):
     p = np.random.default_rng(seed).random(30).round(2)
     assert adjust_from_p(p, procedure="Holm") == pytest.approx(multipletests(p, method="holm")[1], rel=1e-12)
+
+
+@pytest.mark.parametrize("procedure", PROCEDURES)
+def test_adjusting_never_loses_the_last_bit(procedure):
+    """1 - (1 - p) can lie an ulp below p."""
+    for p in np.random.default_rng(2).random((200, 1)):
+        assert p[0] <= adjust_from_p(p, procedure=procedure)[0] <= 1

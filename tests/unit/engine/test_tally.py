@@ -51,7 +51,7 @@ def test_the_histogram_holds_every_maximum_once():
     assert tally.maximum[-1] == sum(NULL.max(axis=0) >= 4)
 
 
-@pytest.mark.parametrize(("chunk", "batch"), [(1, 400), (2, 100), (5, 7)])
+@pytest.mark.parametrize(("chunk", "batch"), [(1, 400), (1, 3), (2, 100), (2, 1), (5, 7)])
 def test_chunks_and_batches_change_no_count(chunk, batch):
     whole, _ = counted(NULL)
     parts, _ = counted(NULL, chunk=chunk, batch=batch)

@@ -6,7 +6,6 @@ import numpy as np
 import pytest
 from scipy.stats import chi2
 
-from mtest.relabel.keys import KeyStream
 from mtest.relabel.selection import Selector
 from mtest.relabel.sets import count_relabellings, key_columns, pair_set, whole_set
 from mtest.relabel.sources import DrawnLabels, EnumeratedLabels
@@ -211,7 +210,3 @@ def test_own_keys_of_a_pair_do_not_depend_on_other_pairs():
         reader.start(3)
         reader.advance(100)
     assert np.array_equal(alone.fill(0)[0], both.fill(1)[0])
-
-
-def test_fresh_keys_have_an_address_that_no_other_stream_has():
-    assert not np.array_equal(KeyStream(9, (0, 0, 3, 1), 6).read(1), KeyStream(9, (0, 0, 3), 6).read(1))
