@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -40,21 +41,7 @@ def risk_difference(values: np.ndarray, in_arm: np.ndarray, *, stratum: np.ndarr
     Mee, R. W. (1984), Biometrics 40, 1175-1176.
     Sato, T. (1989), Biometrics 45, 1323-1324 (variance of the Mantel-Haenszel difference of Greenland & Robins 1985).
     """
-    pair = available_pair(values, in_arm, stratum=stratum)
-    if pair.stratified:
-        estimate, variance = _mantel_haenszel_difference(_tables(pair))
-        se = math.sqrt(variance) if variance >= 0 else math.nan
-        low, high = _normal_limits(estimate, se, level)
-        low, high = (max(low, -1.0), min(high, 1.0)) if se > 0 else (low, high)
-        method = "Mantel-Haenszel, Sato variance"
-    else:
-        counts = _counts(pair)
-        estimate, se = counts.risk_difference, _difference_se(counts)
-        low, high = score_limits("difference", counts, level=level)
-        method = "score (Mee)"
-    return Effect(
-        measure="risk difference", method=method, estimate=estimate, se=se, low=low, high=high, null=0.0, level=level
-    )
+    return _effect(_DIFFERENCE, values, in_arm, stratum=stratum, level=level)
 
 
 def risk_ratio(values: np.ndarray, in_arm: np.ndarray, *, stratum: np.ndarray, level: float = 0.95) -> Effect:
@@ -75,19 +62,7 @@ def risk_ratio(values: np.ndarray, in_arm: np.ndarray, *, stratum: np.ndarray, l
     Koopman, P. A. R. (1984), Biometrics 40, 513-517.
     Greenland, S. & Robins, J. M. (1985), Biometrics 41, 55-68.
     """
-    pair = available_pair(values, in_arm, stratum=stratum)
-    if pair.stratified:
-        estimate, se = _mantel_haenszel_risk_ratio(_tables(pair))
-        low, high = _log_limits(estimate, se, level)
-        method = "Mantel-Haenszel, Greenland-Robins, SE of log"
-    else:
-        counts = _counts(pair)
-        estimate, se = counts.risk_ratio, _log_risk_ratio_se(counts)
-        low, high = score_limits("ratio", counts, level=level)
-        method = "score (Koopman), SE of log"
-    return Effect(
-        measure="risk ratio", method=method, estimate=estimate, se=se, low=low, high=high, null=1.0, level=level
-    )
+    return _effect(_RATIO, values, in_arm, stratum=stratum, level=level)
 
 
 def odds_ratio(values: np.ndarray, in_arm: np.ndarray, *, stratum: np.ndarray, level: float = 0.95) -> Effect:
@@ -107,18 +82,43 @@ def odds_ratio(values: np.ndarray, in_arm: np.ndarray, *, stratum: np.ndarray, l
     Robins, J., Breslow, N. & Greenland, S. (1986), Biometrics 42, 311-323.
     Cornfield, J. (1956), Proceedings of the Third Berkeley Symposium 4, 135-148.
     """
+    return _effect(_ODDS, values, in_arm, stratum=stratum, level=level)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Measure:
+    """One measure: how it is estimated, with its standard error, in one stratum and over several.
+
+    methods : the names of the two, in this order
+    """
+
+    name: str
+    null: float
+    contrast: str
+    methods: tuple[str, str]
+    plain: Callable[[Counts], tuple[float, float]]
+    combined: Callable[[_Tables], tuple[float, float]]
+    limits: Callable[[float, float, float], tuple[float, float]]
+
+
+def _effect(measure: _Measure, values, in_arm, *, stratum, level: float) -> Effect:
     pair = available_pair(values, in_arm, stratum=stratum)
     if pair.stratified:
-        estimate, se = _mantel_haenszel_odds_ratio(_tables(pair))
-        low, high = _log_limits(estimate, se, level)
-        method = "Mantel-Haenszel, Robins-Breslow-Greenland, SE of log"
+        estimate, se = measure.combined(_tables(pair))
+        low, high = measure.limits(estimate, se, level)
     else:
         counts = _counts(pair)
-        estimate, se = counts.odds_ratio, _log_odds_ratio_se(counts)
-        low, high = score_limits("odds ratio", counts, level=level)
-        method = "score, SE of log"
+        estimate, se = measure.plain(counts)
+        low, high = score_limits(measure.contrast, counts, level=level)
     return Effect(
-        measure="odds ratio", method=method, estimate=estimate, se=se, low=low, high=high, null=1.0, level=level
+        measure=measure.name,
+        method=measure.methods[pair.stratified],
+        estimate=estimate,
+        se=se,
+        low=low,
+        high=high,
+        null=measure.null,
+        level=level,
     )
 
 
@@ -152,7 +152,7 @@ def _counts(pair: Pair) -> Counts:
 
 
 def _mantel_haenszel_difference(t: _Tables) -> tuple[float, float]:
-    """Return the estimate and Sato's variance."""
+    """Return the estimate and the root of Sato's variance (NaN where that is negative)."""
     if t.a.size == 0:
         return math.nan, math.nan
     n = t.n1 + t.n0
@@ -160,7 +160,8 @@ def _mantel_haenszel_difference(t: _Tables) -> tuple[float, float]:
     estimate = float(((t.a * t.n0 - t.b * t.n1) / n).sum()) / weight
     p = float(((t.n1**2 * t.b - t.n0**2 * t.a + t.n1 * t.n0 * (t.n0 - t.n1) / 2) / n**2).sum())
     q = float(((t.a * (t.n0 - t.b) + t.b * (t.n1 - t.a)) / (2 * n)).sum())
-    return estimate, (estimate * p + q) / weight**2
+    variance = (estimate * p + q) / weight**2
+    return estimate, math.sqrt(variance) if variance >= 0 else math.nan
 
 
 def _mantel_haenszel_risk_ratio(t: _Tables) -> tuple[float, float]:
@@ -188,28 +189,28 @@ def _mantel_haenszel_odds_ratio(t: _Tables) -> tuple[float, float]:
     return r_sum / s_sum, math.sqrt(float(variance))
 
 
-def _difference_se(counts: Counts) -> float:
+def _plain_difference(counts: Counts) -> tuple[float, float]:
     if min(counts.n_arm, counts.n_reference) == 0:
-        return math.nan
+        return counts.risk_difference, math.nan
     p1, p0 = counts.events_arm / counts.n_arm, counts.events_reference / counts.n_reference
-    return math.sqrt(p1 * (1 - p1) / counts.n_arm + p0 * (1 - p0) / counts.n_reference)
+    return counts.risk_difference, math.sqrt(p1 * (1 - p1) / counts.n_arm + p0 * (1 - p0) / counts.n_reference)
 
 
-def _log_risk_ratio_se(counts: Counts) -> float:
+def _plain_risk_ratio(counts: Counts) -> tuple[float, float]:
     if min(counts.events_arm, counts.events_reference) == 0:
-        return math.nan
+        return counts.risk_ratio, math.nan
     variance = 1 / counts.events_arm - 1 / counts.n_arm + 1 / counts.events_reference - 1 / counts.n_reference
-    return math.sqrt(max(variance, 0.0))
+    return counts.risk_ratio, math.sqrt(max(variance, 0.0))
 
 
-def _log_odds_ratio_se(counts: Counts) -> float:
+def _plain_odds_ratio(counts: Counts) -> tuple[float, float]:
     cells = (
         counts.events_arm,
         counts.n_arm - counts.events_arm,
         counts.events_reference,
         counts.n_reference - counts.events_reference,
     )
-    return math.nan if min(cells) == 0 else math.sqrt(sum(1 / cell for cell in cells))
+    return counts.odds_ratio, math.nan if min(cells) == 0 else math.sqrt(sum(1 / cell for cell in cells))
 
 
 def _quotient(numerator: float, denominator: float) -> float:
@@ -233,3 +234,37 @@ def _log_limits(estimate: float, se: float, level: float) -> tuple[float, float]
         return math.nan, math.nan
     low, high = _normal_limits(math.log(estimate), se, level)
     return math.exp(low), math.exp(high)
+
+
+def _limits_within_1(estimate: float, se: float, level: float) -> tuple[float, float]:
+    low, high = _normal_limits(estimate, se, level)
+    return (max(low, -1.0), min(high, 1.0)) if se > 0 else (low, high)
+
+
+_DIFFERENCE = _Measure(
+    name="risk difference",
+    null=0.0,
+    contrast="difference",
+    methods=("score (Mee)", "Mantel-Haenszel, Sato variance"),
+    plain=_plain_difference,
+    combined=_mantel_haenszel_difference,
+    limits=_limits_within_1,
+)
+_RATIO = _Measure(
+    name="risk ratio",
+    null=1.0,
+    contrast="ratio",
+    methods=("score (Koopman), SE of log", "Mantel-Haenszel, Greenland-Robins, SE of log"),
+    plain=_plain_risk_ratio,
+    combined=_mantel_haenszel_risk_ratio,
+    limits=_log_limits,
+)
+_ODDS = _Measure(
+    name="odds ratio",
+    null=1.0,
+    contrast="odds ratio",
+    methods=("score, SE of log", "Mantel-Haenszel, Robins-Breslow-Greenland, SE of log"),
+    plain=_plain_odds_ratio,
+    combined=_mantel_haenszel_odds_ratio,
+    limits=_log_limits,
+)
