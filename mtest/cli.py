@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 import sys
 import tempfile
 import traceback
@@ -19,6 +20,7 @@ from mtest.bundle.write import check_target, write_bundle
 from mtest.errors import MtestError
 from mtest.plan.read import read_plan
 from mtest.progress import Bar, Lines, Quiet
+from mtest.report.formats import format_p
 from mtest.results import AnalysisResult, FamilyResult
 
 app = typer.Typer(
@@ -27,7 +29,15 @@ app = typer.Typer(
 _err = Console(stderr=True, soft_wrap=True)
 _out = Console(soft_wrap=True)
 
-INTERRUPTED = 130  # the shell's convention for Ctrl-C
+INTERRUPTED, TERMINATED = 130, 143  # the shell's conventions for Ctrl-C and SIGTERM
+
+
+class _Terminated(BaseException):
+    """SIGTERM arrived."""
+
+
+def _terminate(*_) -> None:
+    raise _Terminated
 
 
 @app.callback(invoke_without_command=True)
@@ -38,15 +48,18 @@ def _root(version: Annotated[bool, typer.Option("--version", help="Print the ver
         raise typer.Exit()
 
 
-Jobs = Annotated[int, typer.Option("--jobs", min=0, help="Workers; 0 means one per core. Changes no digit.")]
+Jobs = Annotated[
+    int, typer.Option("--jobs", min=0, metavar="N", help="Workers; 0 means one per core. Changes no digit.")
+]
 Silent = Annotated[bool, typer.Option("--quiet", help="Show no progress and no summary.")]
 
 
 @app.command()
 def run(
-    plan: Annotated[Path, typer.Argument(help="The analysis plan, a TOML file.")],
+    plan: Annotated[Path, typer.Argument(help="The analysis plan, a TOML file.", metavar="PLAN")],
     out: Annotated[
-        Path | None, typer.Option("--out", help="The folder to write; default: out/ and the plan's name.")
+        Path | None,
+        typer.Option("--out", metavar="DIR", help="The folder to write; default: out/ and the plan's name."),
     ] = None,
     jobs: Jobs = 0,
     quiet: Silent = False,
@@ -64,9 +77,12 @@ def run(
 
 @app.command()
 def replay(
-    bundle: Annotated[Path, typer.Argument(help="A folder that `mtest run` wrote.")],
+    bundle: Annotated[Path, typer.Argument(help="A folder that `mtest run` wrote.", metavar="BUNDLE")],
     data: Annotated[
-        Path | None, typer.Option("--data", help="The folder the plan's data paths start from; default: as recorded.")
+        Path | None,
+        typer.Option(
+            "--data", metavar="DIR", help="The folder the plan's data paths start from; default: as recorded."
+        ),
     ] = None,
     jobs: Jobs = 0,
     quiet: Silent = False,
@@ -90,7 +106,8 @@ def _summarise(result: AnalysisResult, folder: Path) -> None:
         _out.print(_verdict(family), highlight=False)
         for h in family.hypotheses:
             if h.rejected:
-                _out.print(f"  {h.endpoint}: {h.arm} vs {h.reference}", highlight=False)
+                p = format_p(h.p_adjusted, alpha=family.alpha)
+                _out.print(f"  {h.endpoint}: {h.arm} vs {h.reference}, adjusted p {p}", highlight=False)
         for warning in family.warnings:
             _err.print(f"Warning: {warning}", highlight=False)
     for warning in result.warnings:
@@ -101,16 +118,21 @@ def _summarise(result: AnalysisResult, folder: Path) -> None:
 def _verdict(family: FamilyResult) -> str:
     rejected = sum(h.rejected for h in family.hypotheses)
     how = "enumerated" if family.exact else "drawn"
+    settled = "every decision settled" if all(h.settled for h in family.hypotheses) else "NOT every decision settled"
     return (
         f"{family.name}: {rejected} of {len(family.hypotheses)} hypotheses rejected at {family.alpha:g} "
-        f"({family.procedure}; {family.n_draws:,} relabellings {how})."
+        f"({family.procedure}; {family.n_draws:,} relabellings {how}; {settled})."
     )
 
 
 def main() -> None:
     """Run the command line; every failure ends in one sentence a fault and its exit code."""
+    # A scheduler ends a run by SIGTERM: as Ctrl-C, so that no worker is left behind.
+    signal.signal(signal.SIGTERM, _terminate)
     try:
         code = app(standalone_mode=False)
+    except _Terminated:
+        code = TERMINATED
     except MtestError as error:
         _say(error.faults)
         code = error.exit_code
@@ -118,7 +140,7 @@ def main() -> None:
         code = INTERRUPTED
     except Exception as error:
         code = _usage(error)
-    if code == INTERRUPTED:
+    if code in (INTERRUPTED, TERMINATED):
         _say(["Interrupted; nothing was written."])
         sys.stderr.flush()
         os._exit(code)  # threads in the middle of a block would be waited for
@@ -129,7 +151,10 @@ def _usage(error: Exception) -> int:
     """Return the exit code of a faulty command line, or of a bug of ours, after saying so."""
     message = getattr(error, "format_message", None)
     if message is not None:
-        _say([f"mtest: {message().rstrip('.')}. Try 'mtest --help'."])
+        said = message().strip()
+        # Without arguments the help was printed and says it all.
+        if said:
+            _say([f"mtest: {said if said.endswith(('?', ')')) else said.rstrip('.') + '.'} Try 'mtest --help'."])
         return 2
     with tempfile.NamedTemporaryFile("w", prefix="mtest-bug-", suffix=".txt", delete=False) as file:
         file.write(traceback.format_exc())

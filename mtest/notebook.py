@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import difflib
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from itertools import combinations
 from pathlib import Path
 
@@ -44,7 +44,7 @@ class JointResult:
     'Familywise error rate, strong control across endpoints, exac'
     """
 
-    table: pd.DataFrame
+    table: pd.DataFrame = field(repr=False)
     exact: bool
     n_draws: int
     n_distinct: tuple[tuple[str, int], ...]
@@ -72,7 +72,7 @@ def joint_test(
     ----------
     outcomes : (subject, endpoint) array of float or DataFrame
         NaN where missing; a missing value travels with its subject. A DataFrame keeps its column names. (subject,) is
-        taken as one endpoint.
+        taken as one endpoint. Where `arm` or `strata` are pandas objects too, their index must be the same.
     arm : (subject,) array of labels
         Planned arms. The order of arms is that of the categories of a pandas Categorical, else sorted.
     reference : label, optional
@@ -130,6 +130,8 @@ def joint_test(
     [4, 20, 6]
     """
     names, values = _read_outcomes(outcomes)
+    _check_order(outcomes, arm, "arm")
+    _check_order(outcomes, strata, "strata")
     arms, codes = _read_labels(arm, "arm", len(values))
     two_sided, sign = _ALTERNATIVES[_choose("alternative", alternative, _ALTERNATIVES)]
     statistics = _read_statistics(statistic, len(names))
@@ -206,43 +208,74 @@ def _choose(name: str, got, allowed) -> str:
 
 
 def _read_outcomes(outcomes) -> tuple[list, np.ndarray]:
+    """Return the endpoints' names and (subject, endpoint) float64 values."""
     try:
-        values = np.array(outcomes, dtype=float)
-    except (TypeError, ValueError) as error:
-        raise UsageError(f"outcomes must hold numbers, NaN where missing; got text or objects ({error}).") from error
-    if values.ndim == 1:
-        values = values[:, None]
-    if values.ndim != 2 or values.size == 0:
-        raise UsageError(
-            f"outcomes must be a (subject, endpoint) array with at least one of each; got shape {values.shape}."
-        )
-    if np.isinf(values).any():
-        row, column = np.argwhere(np.isinf(values))[0]
-        raise DataError(f"outcomes[{row}, {column}] must be finite, or NaN where missing; got {values[row, column]}.")
-    names = list(outcomes.columns) if isinstance(outcomes, pd.DataFrame) else list(range(values.shape[1]))
-    if isinstance(outcomes, pd.Series) and outcomes.name is not None:
-        names = [outcomes.name]
+        # numpy refuses ragged rows, which pandas would pad.
+        frame = pd.DataFrame(outcomes if isinstance(outcomes, (pd.DataFrame, pd.Series)) else np.asarray(outcomes))
+    except ValueError as error:
+        raise UsageError(f"outcomes must be a (subject, endpoint) table of numbers; {_got(outcomes)}.") from error
+    if frame.size == 0:
+        raise UsageError(f"outcomes must have at least one subject and one endpoint; {_got(outcomes)}.")
+    names = list(frame.columns)
     if len(set(names)) < len(names):
         raise UsageError(f"outcomes must have distinct column names; got {names}.")
+    values = np.column_stack([_read_numbers(frame.iloc[:, j], name) for j, name in enumerate(names)])
+    if np.isinf(values).any():
+        row, column = np.argwhere(np.isinf(values))[0]
+        raise DataError(
+            f"outcomes column {names[column]!r} must be finite, or NaN where missing; got {values[row, column]} at "
+            f"subject {row} (counted from 0)."
+        )
     return names, values
+
+
+def _read_numbers(column: pd.Series, name) -> np.ndarray:
+    """Return a column as float64, missing as NaN; dates, text and complex numbers are not numbers."""
+    is_number = pd.api.types.is_numeric_dtype(column) and not pd.api.types.is_complex_dtype(column)
+    if not is_number:
+        odd = [x for x in column if not (pd.isna(x) or isinstance(x, (int, float, np.number, np.bool_)))]
+        if odd or column.dtype != object:
+            shown = repr(odd[0]) if odd else f"a column of {column.dtype}"
+            raise UsageError(
+                f"outcomes column {name!r} must hold numbers, NaN where missing; got {shown}. Convert it first."
+            )
+    return column.to_numpy(dtype=float, na_value=np.nan)
+
+
+def _got(thing) -> str:
+    """Return what was got, in a few words."""
+    if thing is None or np.isscalar(thing):
+        return f"got {thing!r}"
+    shape = getattr(thing, "shape", None)
+    return f"got {type(thing).__name__}" + (f" of shape {shape}" if shape is not None else "")
+
+
+def _check_order(outcomes, labels, name: str) -> None:
+    """Raise UsageError where two pandas objects stand in different orders: aligning silently could hide a mistake."""
+    indexed = (pd.DataFrame, pd.Series)
+    if isinstance(outcomes, indexed) and isinstance(labels, indexed) and not outcomes.index.equals(labels.index):
+        raise UsageError(
+            f"{name} must have the same index as outcomes, in the same order; got another. Use "
+            f"{name}.loc[outcomes.index], or {name}.to_numpy() to go by position."
+        )
 
 
 def _read_labels(labels, name: str, n: int) -> tuple[list, np.ndarray]:
     """Return the distinct labels in order and the code of each subject."""
-    series = pd.Series(labels).reset_index(drop=True)
+    series = None
+    if not isinstance(labels, (pd.DataFrame, set, dict, str)) and np.ndim(labels) == 1:
+        series = pd.Series(labels).reset_index(drop=True)
+    if series is None:
+        raise UsageError(f"{name} must be one label per subject; {_got(labels)}. Pass one column.")
     if len(series) != n:
-        raise UsageError(f"{name} must have one label per subject ({n}); got {len(series)}.")
+        raise UsageError(f"{name} must have one label per subject ({n}); got {len(series)}. Are outcomes transposed?")
     if series.isna().any():
-        raise DataError(
-            f"{name}[{int(np.flatnonzero(series.isna())[0])}] is empty; every randomised subject needs a label."
-        )
+        first = int(np.flatnonzero(series.isna())[0])
+        raise DataError(f"{name}[{first}] must not be empty; got a missing label. Every randomised subject needs one.")
     if isinstance(series.dtype, pd.CategoricalDtype):
         series = series.cat.remove_unused_categories()
         return list(series.cat.categories), series.cat.codes.to_numpy(dtype=np.intp)
-    try:
-        codes, order = pd.factorize(series, sort=True)
-    except TypeError as error:
-        raise UsageError(f"{name} must hold labels of one type; got several ({error}).") from error
+    codes, order = pd.factorize(series, sort=True)
     return list(order), codes.astype(np.intp)
 
 
@@ -300,8 +333,8 @@ class Analysis:
     ['manifest.json', 'null.npz']
     """
 
-    result: AnalysisResult
-    plan_file: PlanFile
+    result: AnalysisResult = field(repr=False)
+    plan_file: PlanFile = field(repr=False)
 
     @property
     def table(self) -> pd.DataFrame:

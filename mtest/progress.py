@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import time
 from contextlib import AbstractContextManager
+from datetime import timedelta
 
 import numpy as np
 from rich.console import Console
-from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
+from rich.progress import BarColumn, Progress, TaskID, TextColumn, TimeRemainingColumn
 
 from mtest.adjust.montecarlo import confidence_sequence
 from mtest.engine.schedule import Progress as Step
@@ -39,7 +40,7 @@ class Bar(Quiet):
             console=console,
             transient=True,
         )
-        self._tasks: dict[str, tuple[int, float]] = {}
+        self._tasks: dict[str, tuple[TaskID, float, int]] = {}
 
     def __enter__(self) -> Bar:
         self._bar.start()
@@ -50,18 +51,13 @@ class Bar(Quiet):
 
     def __call__(self, family: str, step: Step) -> None:
         """Draw the family's bar."""
+        now = time.perf_counter()
         if family not in self._tasks:
-            task = self._bar.add_task(family, total=step.planned, rate="", width="")
-            self._tasks[family] = (task, time.perf_counter())
-        task, started = self._tasks[family]
-        rate = step.done / max(time.perf_counter() - started, 1e-9)
-        self._bar.update(
-            task,
-            completed=step.done,
-            total=step.planned,
-            rate=f"{rate:,.0f}/s",
-            width=f"p ± {half_width(step):.4f}",
-        )
+            # The rate counts from the first report: before it lie the pilot and the start of workers.
+            self._tasks[family] = (self._bar.add_task(family, total=step.planned, rate="", width=""), now, step.done)
+        task, started, first = self._tasks[family]
+        rate = f"{(step.done - first) / (now - started):,.0f}/s" if step.done > first else ""
+        self._bar.update(task, completed=step.done, total=step.planned, rate=rate, width=show_width(step))
 
 
 class Lines(Quiet):
@@ -69,24 +65,27 @@ class Lines(Quiet):
 
     def __init__(self, console: Console) -> None:
         self._console = console
-        self._seen: dict[str, tuple[float, float]] = {}
+        self._seen: dict[str, tuple[float, int, float]] = {}
 
     def __call__(self, family: str, step: Step) -> None:
         """Print a line if one is due."""
         now = time.perf_counter()
-        started, last = self._seen.get(family, (now, -np.inf))
+        started, first, last = self._seen.get(family, (now, step.done, -np.inf))
         if now - last < _LINE_SECONDS and step.done < step.planned:
             return
-        self._seen[family] = (started, now)
-        rate = step.done / max(now - started, 1e-9)
-        left = (step.planned - step.done) / rate if now > started else np.nan
-        pace = f", {rate:,.0f}/s, {left:.0f} s left" if now > started else ""
+        self._seen[family] = (started, first, now)
+        pace = ""
+        if first < step.done < step.planned:
+            rate = (step.done - first) / (now - started)
+            pace = f", {rate:,.0f}/s, {timedelta(seconds=round((step.planned - step.done) / rate))} left"
         self._console.print(
-            f"{family}: {step.done:,} of {step.planned:,} draws{pace}, p ± {half_width(step):.4f}", highlight=False
+            f"{family}: {step.done:,} of {step.planned:,} draws{pace}, {show_width(step)}", highlight=False
         )
 
 
-def half_width(step: Step) -> float:
-    """Return the largest half-width of the confidence sequences of the step-down p-values so far."""
+def show_width(step: Step) -> str:
+    """Return the largest half-width of the confidence sequences of the step-down p-values so far, in words."""
+    if step.exact:
+        return "enumerated"
     low, high = confidence_sequence(step.tally.step, step.tally.n)
-    return float(np.max(high - low) / 2)
+    return f"widest p ± {np.max(high - low) / 2:.3f}"

@@ -61,14 +61,23 @@ def _row(h: HypothesisResult, control: str) -> dict:
 
 
 def check_target(folder: Path) -> None:
-    """Raise UsageError unless a bundle may be written at `folder`: nothing is there, or a bundle to be replaced."""
-    if folder.is_dir() and ((folder / MANIFEST).is_file() or not any(folder.iterdir())):
-        return
-    if folder.exists():
+    """Raise UsageError unless a bundle can be written at `folder`: nothing is there, or a bundle to be replaced."""
+    is_bundle = folder.is_dir() and ((folder / MANIFEST).is_file() or not any(folder.iterdir()))
+    if not is_bundle and folder.exists():
         raise UsageError(
             f"{folder}: the output must be a new folder or an earlier bundle; got something else of that name. "
             "Choose another with --out, or remove it."
         )
+
+    parent = next(path for path in folder.absolute().parents if path.exists())
+    try:
+        Path(tempfile.mkdtemp(prefix=".mtest-", dir=parent)).rmdir()
+    except OSError as error:
+        raise UsageError(_not_writable(folder, error)) from error
+
+
+def _not_writable(folder: Path, error: OSError) -> str:
+    return f"{folder}: the output folder must be writable; got '{error.strerror}'. Choose another with --out."
 
 
 def write_bundle(result: AnalysisResult, folder: Path, *, plan_text: str, data_folder: str) -> None:
@@ -92,9 +101,7 @@ def write_bundle(result: AnalysisResult, folder: Path, *, plan_text: str, data_f
         folder.parent.mkdir(parents=True, exist_ok=True)
         new = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
     except OSError as error:
-        raise UsageError(
-            f"{folder}: the output folder must be writable; got '{error.strerror}'. Choose another with --out."
-        ) from error
+        raise UsageError(_not_writable(folder, error)) from error
     try:
         _write_files(result, new, plan_text=plan_text, data_folder=data_folder)
         new.chmod(0o755)

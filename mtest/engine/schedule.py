@@ -23,6 +23,7 @@ from mtest.engine.job import Job
 from mtest.engine.kernel import tally_blocks
 from mtest.engine.tally import Tally, Thresholds, empty_tally
 from mtest.relabel.keys import BLOCK_DRAWS
+from mtest.relabel.sources import EnumeratedLabels
 
 # Starting processes takes about two seconds; shorter work runs on threads, which share the arrays and start at once.
 _PROCESS_SECONDS = 20.0
@@ -32,12 +33,12 @@ _GROWTH = 1.5  # each further round brings the draws to this multiple
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Progress:
-    """How far a run is: draws done and planned, and the tally so far."""
+    """How far a run is: draws done and planned, the tally so far, and whether all relabellings are enumerated."""
 
     done: int
     planned: int
+    exact: bool
     tally: Tally
-    thresholds: Thresholds
 
 
 def run_job(
@@ -63,6 +64,7 @@ def run_job(
         Called after every finished task.
     """
     rounds = list(_rounds(at_least, job.labels.n_draws))
+    exact = isinstance(job.labels, EnumeratedLabels)
     total = empty_tally(thresholds)
     workers = n_jobs or os.cpu_count() or 1
     first = 0
@@ -72,7 +74,7 @@ def run_job(
             for tally in _run_blocks(job, thresholds, first, last, workers=workers):
                 total.add(tally)
                 if report is not None:
-                    report(Progress(done=total.n, planned=draws, tally=total, thresholds=thresholds))
+                    report(Progress(done=total.n, planned=draws, exact=exact, tally=total))
             first = last
             if draws < rounds[-1] and settled(total):
                 break

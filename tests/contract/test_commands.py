@@ -63,7 +63,10 @@ def study(tmp_path):
 def test_run_says_what_was_found_and_where_the_report_is(study):
     done = mtest("run", "plan.toml", cwd=study)
     assert done.returncode == 0, done.stderr
-    assert "All: 0 of 1 hypotheses rejected at 0.05 (step-down max-T; 2,048 relabellings drawn)." in done.stdout
+    assert (
+        "All: 0 of 1 hypotheses rejected at 0.05 (step-down max-T; 2,048 relabellings drawn; every decision settled)."
+        in done.stdout
+    )
     assert f"Report: {Path('out') / 'plan' / 'report.html'}" in done.stdout
     assert (study / "out" / "plan" / "report.html").is_file()
 
@@ -102,6 +105,24 @@ def test_an_output_that_cannot_be_made_is_one_sentence(study):
     assert done.returncode == 2
     assert "the output folder must be writable" in done.stderr
     assert "Traceback" not in done.stderr
+
+
+def test_an_output_that_cannot_be_made_is_found_before_drawing(study):
+    done = mtest("run", "plan.toml", "--out", "/proc/x", cwd=study)
+    assert done.returncode == 2
+    assert done.stderr.count("\n") == 1
+    assert "draws" not in done.stderr
+
+
+def test_without_a_command_the_help_is_all_that_is_said(study):
+    done = mtest(cwd=study)
+    assert "Usage" in done.stdout
+    assert done.stderr == ""
+
+
+def test_python_m_mtest_is_the_command_line(study):
+    done = subprocess.run([sys.executable, "-m", "mtest", "--version"], capture_output=True, text=True, check=False)
+    assert done.stdout.startswith("mtest ")
 
 
 def test_a_missing_plan_is_one_sentence(study):
@@ -228,18 +249,21 @@ def _children(pid):
 
 
 @pytest.mark.skipif(not Path("/proc/self/stat").exists(), reason="looks for children in /proc")
-@pytest.mark.parametrize("workers", ["threads", "processes"])
-def test_ctrl_c_ends_at_once_without_children_or_a_bundle(study, workers):
+@pytest.mark.parametrize(
+    ("workers", "sent", "code"),
+    [("threads", signal.SIGINT, 130), ("processes", signal.SIGINT, 130), ("processes", signal.SIGTERM, 143)],
+)
+def test_ctrl_c_and_sigterm_end_at_once_without_children_or_a_bundle(study, workers, sent, code):
     (study / "plan.toml").write_text(SMALL.format(draws=2_000_000_000), encoding="utf-8")
     seconds = "0" if workers == "processes" else "1e9"
-    code = (
+    program = (
         "import sys, mtest.engine.schedule as s, mtest.cli as c\n"
         f"s._PROCESS_SECONDS = {seconds}\n"
         "sys.argv = ['mtest', 'run', 'plan.toml', '--jobs', '2', '--out', 'b']\n"
         "c.main()\n"
     )
     started = subprocess.Popen(
-        [sys.executable, "-c", code], cwd=study, stderr=subprocess.PIPE, text=True, start_new_session=True
+        [sys.executable, "-c", program], cwd=study, stderr=subprocess.PIPE, text=True, start_new_session=True
     )
     wanted = {"threads": 0, "processes": 3}[workers]  # two workers and a tracker at least
     deadline = time.monotonic() + 60
@@ -251,9 +275,10 @@ def test_ctrl_c_ends_at_once_without_children_or_a_bundle(study, workers):
     assert len(children) >= wanted
     # The trackers of Python and joblib end by themselves once their parent has; who reaps them is the system's affair.
     workers_only = [pid for pid in children if "LokyProcess" in Path(f"/proc/{pid}/cmdline").read_text()]
-    os.killpg(started.pid, signal.SIGINT)
+    # A terminal sends Ctrl-C to the whole group, a scheduler sends SIGTERM to the parent alone.
+    (os.killpg if sent is signal.SIGINT else os.kill)(started.pid, sent)
     _, said = started.communicate(timeout=10)
-    assert started.returncode == 130
+    assert started.returncode == code
     assert "Interrupted; nothing was written." in said
     assert not [pid for pid in workers_only if _state(pid) is not None]
     time.sleep(1)

@@ -34,6 +34,7 @@ LEVEL = {
     "progress": 9,
     "": 10,  # mtest/__init__.py, the public face
     "cli": 11,
+    "__main__": 12,
 }
 PURE = {"relabel", "scores", "engine", "adjust", "estimate", "family"}
 PURE_MAY_IMPORT = {
