@@ -9,7 +9,8 @@ from typing import Any, get_args
 from pydantic_core import ErrorDetails
 
 from mtest.plan.records import Plan, Record
-from mtest.plan.wording import item, nearest, shown
+from mtest.plan.remedies import example_pairs, remedy
+from mtest.plan.wording import item, nearest, nearest_word, shown
 
 ENUM_CUTOFF = 0.4  # a closed list of words may suggest more boldly than names may: 'down' is near enough to 'lower'
 
@@ -40,9 +41,9 @@ FALLBACK = "is not of the form that a plan takes here"
 
 # Where a field takes more than one form, the checker reports each form it tried; the author gets one sentence.
 SEVERAL_FORMS: dict[tuple[str, str], tuple[str, tuple[str, ...]]] = {
-    ("family", "endpoints"): ("must be 'all' or a list of at least one endpoint name", ("all",)),
+    ("family", "endpoints"): ("must be 'all' or a list of at least one endpoint name", ()),
     ("family", "comparisons"): (
-        "must be 'each vs reference', 'all pairs' or a list of pairs such as [['4 %', 'vehicle']]",
+        "must be 'each vs reference', 'all pairs' or a list of pairs of arms",
         ("each vs reference", "all pairs"),
     ),
     ("endpoint", "event"): ("must be text, a number, true or false", ()),
@@ -65,7 +66,10 @@ def sentences(errors: list[ErrorDetails], data: dict[str, Any]) -> list[str]:
         The plan as handed to the records.
     """
     found: dict[Location, str] = {}
+    meant = _meant_keys(errors)
     for error in errors:
+        if error["type"] == "missing" and error["loc"] in meant:
+            continue  # the key is there, misspelt, and has a sentence already
         place = _existing(error["loc"], data)
         if error["type"] == "missing" and place == error["loc"][:-1]:
             place = error["loc"]  # the key that should be there
@@ -74,6 +78,18 @@ def sentences(errors: list[ErrorDetails], data: dict[str, Any]) -> list[str]:
         # Of several findings at one place the first is kept: they are the forms tried of one field.
         found.setdefault(place, _sentence(error, place, data))
     return list(found.values())
+
+
+def faulty_sections(errors: list[ErrorDetails]) -> set[str]:
+    """Return the sections of the plan with a finding, and those whose name is misspelt."""
+    return {str(loc[0]) for loc in (*(error["loc"] for error in errors), *_meant_keys(errors))}
+
+
+def _meant_keys(errors: list[ErrorDetails]) -> set[Location]:
+    """Return the places that unknown keys are near to."""
+    unknown = [error["loc"] for error in errors if error["type"] == "extra_forbidden"]
+    near = [(*loc[:-1], nearest_word(loc[-1], _known_keys(loc[:-1]))) for loc in unknown]
+    return {loc for loc in near if loc[-1] is not None}
 
 
 def _sentence(error: ErrorDetails, place: Location, data: dict[str, Any]) -> str:
@@ -95,13 +111,16 @@ def _sentence(error: ErrorDetails, place: Location, data: dict[str, Any]) -> str
     if form is not None and len(place) > 3:
         return f"{where} {ONE_VALUE}; got {shown(got)}."
     if form is not None:
-        return f"{where} {form[0]}; got {shown(got)}.{nearest(got, form[1], cutoff=ENUM_CUTOFF)}"
+        rule = form[0] + (example_pairs(data) if place[2] == "comparisons" else "")
+        hint = nearest(got, form[1], cutoff=ENUM_CUTOFF) or remedy(error, place[-1], got)
+        return f"{where} {rule}; got {shown(got)}.{hint}"
     context = error.get("ctx", {})
     rule = RULES[error["type"]](context) if error["type"] in RULES else FALLBACK
     if place[-1] == "alpha" and error["type"] in ("greater_than", "less_than"):
         rule = LEVEL_RULE
     choices = re.findall(r"'([^']*)'", str(context.get("expected", "")))
-    return f"{where} {rule}; got {shown(got)}.{nearest(got, choices, cutoff=ENUM_CUTOFF)}"
+    hint = nearest(got, choices, cutoff=ENUM_CUTOFF) or remedy(error, place[-1], got)
+    return f"{where} {rule}; got {shown(got)}.{hint}"
 
 
 def _missing(place: Location, data: dict[str, Any]) -> str:
@@ -111,16 +130,20 @@ def _missing(place: Location, data: dict[str, Any]) -> str:
         section = f"[[{key}]]" if many else f"[{key}]"
         return f"the plan must have {'at least one section' if many else 'a section'} {section}; got none. Add it."
     choices = [f'"{word}"' for word in _words(_annotation(place))]
-    example = f" = {' or '.join(choices)}" if choices else ""
+    example = f" = {' or '.join(choices)}" if choices else " = a whole number of your choice" if key == "seed" else ""
     return f"{path(place[:-1], data)} must have the key '{key}'; got none. Add {key}{example}."
 
 
 def _unknown_key(place: Location, data: dict[str, Any]) -> str:
-    record = _record(place[:-1])
-    known = list(record.model_fields) if record else []
+    known = _known_keys(place[:-1])
     where = f"in {path(place[:-1], data)}" if len(place) > 1 else "at the top level"
     hint = nearest(place[-1], known) or " Remove it, or correct its spelling."
     return f"unknown key '{place[-1]}' {where}; the keys known there are {', '.join(known)}.{hint}"
+
+
+def _known_keys(place: Location) -> list[str]:
+    record = _record(place)
+    return list(record.model_fields) if record else []
 
 
 def path(place: Location, data: dict[str, Any]) -> str:

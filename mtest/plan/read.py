@@ -12,9 +12,11 @@ from typing import Any
 from pydantic import TypeAdapter, ValidationError
 
 from mtest.errors import PlanError
-from mtest.plan.faults import sentences
+from mtest.plan.faults import faulty_sections, sentences
 from mtest.plan.records import Plan
 from mtest.plan.rules import broken_rules
+
+REPEATED = ("endpoint", "family", "analysis_set", "data.long")  # sections that a plan may hold more than once
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -82,7 +84,7 @@ def parse_plan(text: str, name: str) -> Plan:
     except ValidationError as error:
         findings = error.errors(include_url=False)
         faults = sentences(findings, data)
-        plan = _sound_sections(data, {str(finding["loc"][0]) for finding in findings})
+        plan = _sound_sections(data, faulty_sections(findings))
     faults += broken_rules(plan)
     if faults:
         raise PlanError([f"{name}: {fault}" for fault in faults])
@@ -119,14 +121,30 @@ def _syntax_fault(message: str, text: str) -> str:
     place = place.removesuffix(")").replace("end of document", "the end of the file")
     reason = reason[:1].lower() + reason[1:]
     found = re.match(r"line (\d+)", place)
-    line = text.splitlines()[int(found[1]) - 1].strip() if found else ""
+    lines = text.splitlines()[: int(found[1])] if found else []
+    line = lines[-1].strip() if lines else ""
     quoted = f": `{line}`" if line else ""
+    if reason.startswith(("cannot overwrite", "cannot declare", "duplicate inline table key")):
+        return _given_twice(f"{place}{quoted}", lines)
     if reason == "invalid value":
         return (
             f"a plan must be valid TOML; got an invalid value at {place}{quoted}. "
             "Text needs quotation marks, numbers none, true and false small letters."
         )
     return f"a plan must be valid TOML; got a mistake at {place} ({reason}){quoted}. Correct it."
+
+
+def _given_twice(place: str, lines: list[str]) -> str:
+    """Return the sentence for a key or a section that stands twice; `lines` end with the second of them."""
+    heads = [re.match(r"\s*(\[{1,2})\s*([\w.]+)\s*\]", line) for line in lines]
+    section = next((head for head in reversed(heads) if head), None)
+    if section and section is heads[-1]:
+        name = section[2]
+        do = f"Write [[{name}]], each time" if name in REPEATED else "Put its keys under the first"
+        return f"a plan must have the section [{name}] once; got it again at {place}. {do}."
+    another = section and section[2] in REPEATED
+    do = f", or write [[{section[2]}]] above it to begin another" if another else ""
+    return f"a plan must have each key of a section once; got one again at {place}. Remove one of the two{do}."
 
 
 def _prepared(data: dict[str, Any]) -> dict[str, Any]:

@@ -69,7 +69,7 @@ def _reference_is_an_arm(plan: Plan) -> Iterator[str]:
     if reference and reference not in arms:
         yield (
             f"randomisation.reference must be one of randomisation.arms, {listed(arms)}; "
-            f"got {shown(reference)}.{nearest(reference, arms)}"
+            f"got {shown(reference)}.{nearest(reference, arms) or ' Correct the name, or add the arm.'}"
         )
 
 

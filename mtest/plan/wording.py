@@ -29,11 +29,17 @@ def shown(value: object) -> str:
 
 def nearest(word: object, known: Iterable[str], *, cutoff: float = 0.6) -> str:
     """Return " Did you mean '...'?" for the known word most like `word`, or "" where none is near."""
+    found = nearest_word(word, known, cutoff=cutoff)
+    return "" if found is None else f" Did you mean '{found}'?"
+
+
+def nearest_word(word: object, known: Iterable[str], *, cutoff: float = 0.6) -> str | None:
+    """Return the known word most like `word`, or None where none is near."""
     if not isinstance(word, str):
-        return ""
+        return None
     by_folded = {name.casefold().strip(): name for name in known}
     found = difflib.get_close_matches(word.casefold().strip(), list(by_folded), n=1, cutoff=cutoff)
-    return f" Did you mean '{by_folded[found[0]]}'?" if found else ""
+    return by_folded[found[0]] if found else None
 
 
 def listed(words: Sequence[str], *, last: str = "or", most: int = 8) -> str:

@@ -12,6 +12,7 @@ from mtest.plan.records import Endpoint, Family, Plan
 from mtest.plan.wording import item, shown
 from mtest.trial.arrays import Trial
 from mtest.trial.cautions import about_endpoint, lone_arms, stripped_cells
+from mtest.trial.cells import is_missing
 from mtest.trial.long import LongData, chosen_rows, keyed
 from mtest.trial.outcomes import as_numbers, endpoint_data
 from mtest.trial.sources import Table, read_table
@@ -62,8 +63,8 @@ def assemble(plan: Plan, folder: Path) -> tuple[Trial, dict[str, str]]:
     cells = exchange_cells(subjects, plan.randomisation, faults)
     sets = analysis_sets(subjects, plan, faults)
     observed = [
-        _observed(index, endpoint, subjects, long, faults, all_read=len(long) == len(plan.data.long))
-        for index, endpoint in enumerate(plan.endpoint)
+        _observed(index, plan, subjects, long, faults, all_read=len(long) == len(plan.data.long))
+        for index in range(len(plan.endpoint))
     ]
     if arm is None or cells is None or any(values is None for values in observed) or faults:
         raise _error(faults)
@@ -123,9 +124,10 @@ def _read(folder: Path, name: str, faults: list[str], hashes: dict[str, str]) ->
 
 
 def _observed(
-    index: int, endpoint: Endpoint, subjects: Table, long: tuple[LongData, ...], faults: list[str], *, all_read: bool
+    index: int, plan: Plan, subjects: Table, long: tuple[LongData, ...], faults: list[str], *, all_read: bool
 ) -> np.ndarray | None:
     """Return (subject,) float64 of one endpoint before any filling; None where its values were not found."""
+    endpoint = plan.endpoint[index]
     where = item("endpoint", index, endpoint.name)
     n_subjects = len(subjects.frame)
     if endpoint.value.parameter:
@@ -139,9 +141,24 @@ def _observed(
     cells = table.column(endpoint.value.column, faults, purpose=where)
     if cells is None:
         return None
+    if _is_used(endpoint, plan) and is_missing(cells.iloc[rows]).all():
+        faults.append(_all_missing(endpoint, table, where))
     values = np.full(n_subjects, np.nan)
     values[position] = as_numbers(cells.iloc[rows], endpoint, table, faults, where=where)
     return values
+
+
+def _is_used(endpoint: Endpoint, plan: Plan) -> bool:
+    return any(family.endpoints == "all" or endpoint.name in family.endpoints for family in plan.family)
+
+
+def _all_missing(endpoint: Endpoint, table: Table, where: str) -> str:
+    value = endpoint.value
+    rows = f" for parameter {shown(value.parameter)} at visit {shown(value.visit)}" if value.parameter else ""
+    return (
+        f"{table.name}: column {shown(value.column)} must hold at least one value{rows} ({where}); got none. "
+        "Name another column, or take the endpoint out of the plan."
+    )
 
 
 def _arms_without_data(

@@ -10,8 +10,11 @@ import pandas as pd
 from mtest.plan.records import DEFAULT_STATISTIC, Endpoint
 from mtest.plan.wording import listed, nearest, shown
 from mtest.trial.arrays import EndpointData
-from mtest.trial.cells import NUMBER, distinct, equal_to, is_missing, numbers, wrong
+from mtest.trial.cells import NUMBER, distinct, equal_to, is_missing, numbers, two_words, wrong
 from mtest.trial.sources import MISSING_TOKENS, Table
+
+CORRECT_OR_NAME = "Write 0 and 1, or one word for the event, named in the plan, and one for no event."
+LIST_LEVELS = "Correct the cell, leave it empty, NA or '.' if the value is missing, or list its levels in the plan."
 
 
 def as_numbers(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], *, where: str) -> np.ndarray:
@@ -62,7 +65,7 @@ def _continuous(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list
 
 def _ordinal(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], where: str) -> np.ndarray:
     if not endpoint.levels:
-        return numbers(cells, table, faults, purpose=where)
+        return numbers(cells, table, faults, purpose=where, for_words=LIST_LEVELS)
     for level in set(endpoint.levels) & set(MISSING_TOKENS):
         faults.append(
             f"{table.name}: a level must not be a sign for a missing value ({where}); got level {shown(level)}. "
@@ -83,8 +86,10 @@ def _ordinal(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[st
 
 def _binary(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str], where: str) -> np.ndarray:
     missing = is_missing(cells)
+    words = two_words(cells)
+    do = f"In the plan name {listed(words)} as event." if words else CORRECT_OR_NAME
     if endpoint.event is None:
-        values = numbers(cells, table, faults, purpose=f"{where}; for text name the event in the plan")
+        values = numbers(cells, table, faults, purpose=where, for_words=do)
         odd = ~np.isnan(values) & (values != 0) & (values != 1)
         if odd.any():
             faults.append(
@@ -92,10 +97,11 @@ def _binary(cells: pd.Series, endpoint: Endpoint, table: Table, faults: list[str
                 f"0 or 1 ({where}); got {wrong(cells[odd])}. Correct the cell, or name the event in the plan."
             )
         return values
-    event = equal_to(cells, endpoint.event, table, faults, purpose=where)
+    event = equal_to(cells, endpoint.event, table, faults, purpose=where, for_words=do)
     others = distinct(cells[~missing & ~event])
     if len(_different(others, endpoint.event)) > 1:
-        hint = nearest(endpoint.event, others) or " Write one word for no event, or correct the event in the plan."
+        correct = f" {do}" if words else " Write one word for no event, or correct the event in the plan."
+        hint = nearest(endpoint.event, others) or correct
         faults.append(
             f"{table.name}: column {shown(cells.name)} must hold the event {shown(endpoint.event)} and at most one "
             "other "

@@ -6,6 +6,7 @@ import codecs
 import csv
 import hashlib
 import io
+import re
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from pathlib import Path
@@ -17,6 +18,8 @@ from mtest.errors import DataError
 from mtest.plan.wording import nearest, shown
 
 MISSING_TOKENS = ("", "NA", ".")  # a value cell that holds one of these, after stripping white space, is missing
+SEPARATORS = {";": "semicolons", "\t": "tabs", "|": "vertical bars"}  # beside the comma
+WORKBOOKS = (b"PK\x03\x04", b"\xd0\xcf\x11\xe0")  # the first bytes of .xlsx (a zip archive) and of .xls
 ROWS_SHOWN = 5  # rows named in a fault before "and N more"
 
 
@@ -74,6 +77,8 @@ def read_table(path: Path, name: str) -> Table:
     DataError
         If the file cannot be read, is neither CSV nor Parquet, has no rows, two columns of one name, or ragged rows.
     """
+    if path.is_dir():
+        raise DataError(f"{name}: a data file must be a file; got a folder. Name the file in it.")
     reader = READERS.get(path.suffix.lower())
     if reader is None:
         raise DataError(
@@ -114,13 +119,21 @@ def _bytes(path: Path, name: str) -> bytes:
 
 def _csv(raw: bytes, name: str) -> Rows:
     # The csv module, not pandas: it knows the line of each row, and tells a ragged row from a row of missing values.
+    if raw.startswith(WORKBOOKS):
+        raise DataError(f"{name}: a CSV file must be text; this is an Excel workbook; export it as CSV.")
+    if raw.startswith((codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE)):
+        raise DataError(
+            f"{name}: a CSV file must be UTF-8 text; got UTF-16. Save the file as UTF-8, in Excel: CSV UTF-8."
+        )
     try:
         text = raw.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = raw[: error.start].count(b"\n") + 1
         raise DataError(
-            f"{name}, line {line}: a CSV file must be UTF-8 text; got a byte that is not. Save the file as UTF-8."
+            f"{name}, line {line}: a CSV file must be UTF-8 text; got a byte that is not. Save the file as UTF-8, "
+            "in Excel: CSV UTF-8."
         ) from error
+    _check_separator(text, name)
     reader = csv.reader(io.StringIO(text, newline=""), strict=True)
     rows, numbers, first_line = [], [], 1
     try:
@@ -143,11 +156,25 @@ def _csv(raw: bytes, name: str) -> Rows:
             f"header, {len(header)}; got {' or '.join(map(str, widths[:3]))}. Check commas, and quotation marks "
             "around them."
         )
-    if len(header) == 1 and any(mark in header[0] for mark in ";\t|"):
-        raise DataError(
-            f"{name}, line 1: cells must be separated by commas; got {shown(header[0])}. Export with commas."
-        )
     return header, rows[1:], numbers[1:], "line"
+
+
+def _check_separator(text: str, name: str) -> None:
+    """Raise if the header is one cell that holds another separator."""
+    # Before the rows are looked at: decimal commas would make them ragged, quotation marks malformed.
+    blank, header = re.match(r"([\r\n]*)([^\r\n]*)", text).groups()
+    try:
+        if len(next(csv.reader([header]))) > 1:
+            return
+    except csv.Error:
+        return  # the reader of all rows meets it again, and tells it
+    for mark, word in SEPARATORS.items():
+        if mark in header:
+            line = blank.count("\n") + 1
+            raise DataError(
+                f"{name}, line {line}: cells must be separated by commas; got {word}. Export with commas and "
+                "decimal points."
+            )
 
 
 def _parquet(raw: bytes, name: str) -> Rows:

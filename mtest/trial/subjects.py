@@ -8,8 +8,8 @@ import numpy as np
 import pandas as pd
 
 from mtest.plan.records import Plan, Randomisation
-from mtest.plan.wording import item, listed, nearest, shown
-from mtest.trial.cells import distinct, equal_to
+from mtest.plan.wording import item, listed, nearest_word, shown
+from mtest.trial.cells import CORRECT, distinct, equal_to, two_words
 from mtest.trial.sources import Table
 
 MIN_PER_ARM = 2  # a spread within an arm cannot be seen in one subject
@@ -54,16 +54,19 @@ def arm_index(subjects: Table, randomisation: Randomisation, faults: list[str]) 
     if cells is None:
         return None
     index = pd.Index(arms).get_indexer(pd.Index(cells))
+    meant = set()
     for label in distinct(cells[index < 0]):
         where = subjects.rows(cells.index[cells == label])
-        hint = nearest(label, arms) or " Correct the cell, or add the arm to randomisation.arms."
+        near = nearest_word(label, arms)
+        meant.add(near)
+        hint = f" Did you mean '{near}'?" if near else " Correct the cell, or add the arm to randomisation.arms."
         faults.append(
             f"{subjects.name}, {where}: column {shown(column)} must hold one of randomisation.arms, {listed(arms)}; "
             f"got {shown(label)}.{hint}"
         )
     for place, arm in enumerate(arms):
         count = int((index == place).sum())
-        if count < MIN_PER_ARM:
+        if count < MIN_PER_ARM and arm not in meant:  # the subjects of an arm that is misspelt may be there
             rule = "at least one subject" if count == 0 else f"at least {MIN_PER_ARM} subjects"
             faults.append(
                 f"{subjects.name}: arm {shown(arm)} must have {rule}; got {count or 'none'} in column {shown(column)}. "
@@ -100,8 +103,13 @@ def analysis_sets(subjects: Table, plan: Plan, faults: list[str]) -> dict[str, n
             if cells is None:
                 absent = True
                 continue
-            chosen = equal_to(cells, stated, subjects, faults, purpose=purpose)
-            if not chosen.any():
+            n_before = len(faults)
+            words = two_words(cells)
+            do = f"In the plan name {listed(words)}." if words else CORRECT
+            chosen = equal_to(cells, stated, subjects, faults, purpose=purpose, for_words=do)
+            if len(faults) > n_before:
+                absent = True
+            elif not chosen.any():
                 held = listed(sorted(set(cells)), last="and", most=5)
                 faults.append(
                     f"{subjects.name}: column {shown(column)} must hold {shown(stated)} for at least one subject "

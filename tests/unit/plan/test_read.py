@@ -47,12 +47,16 @@ def test_a_plan_file_keeps_its_text_and_the_hash_of_its_bytes(plan_text, tmp_pat
 def test_whole_numbers_serve_as_numbers_but_true_does_not(plan_text):
     """alpha = true would otherwise pass as 1."""
     (fault,) = faults_of(plan_text(('comparisons = "each', 'alpha = true\ncomparisons = "each')))
-    assert fault == 'p.toml: family[1] "All".alpha must be a number; got true.'
+    assert fault == 'p.toml: family[1] "All".alpha must be a number; got true. Write a level such as 0.05.'
 
 
 FORM_FAULTS = {
     "missing section": ("[draws]\nseed = 1\n", "", "the plan must have a section [draws]; got none. Add it."),
-    "missing key": ("seed = 1", "", "draws must have the key 'seed'; got none. Add seed."),
+    "missing key": (
+        "seed = 1",
+        "",
+        "draws must have the key 'seed'; got none. Add seed = a whole number of your choice.",
+    ),
     "missing key with words": (
         'column = "change" }\nbetter = "lower"',
         'column = "change" }',
@@ -144,13 +148,14 @@ FORM_FAULTS = {
     "comparisons": (
         '"each vs reference"',
         '"each vs control"',
-        "family[1] \"All\".comparisons must be 'each vs reference', 'all pairs' or a list of pairs such as "
-        "[['4 %', 'vehicle']]; got 'each vs control'. Did you mean 'each vs reference'?",
+        "family[1] \"All\".comparisons must be 'each vs reference', 'all pairs' or a list of pairs of arms such as "
+        '[["high", "vehicle"]]; got'
+        " 'each vs control'. Did you mean 'each vs reference'?",
     ),
     "a pair of three": (
         '["high", "low"]',
         '["high", "low", "vehicle"]',
-        "a list of pairs such as [['4 %', 'vehicle']]",
+        'a list of pairs of arms such as [["high", "vehicle"]]; got',
     ),
     "a table for a list of names": (
         'strata = ["site"]',
@@ -167,7 +172,7 @@ FORM_FAULTS = {
     "a pair of none": (
         '["high", "low"]',
         "[]",
-        "[['4 %', 'vehicle']]; got [[], ['high', 'vehicle']].",
+        "; got [[], ['high', 'vehicle']].",
     ),
     "event a list": (
         'event = "yes"',
@@ -241,7 +246,10 @@ SYNTAX_FAULTS = {
         "[study]\ntitle = Pain\n",
         "p.toml: a plan must be valid TOML; got an invalid value at line 2, column 9: `title = Pain`. Text needs",
     ),
-    "key twice": ("a = 1\na = 2\n", "a mistake at line 2, column 6 (cannot overwrite a value): `a = 2`. Correct it."),
+    "key twice": (
+        "a = 1\na = 2\n",
+        "must have each key of a section once; got one again at line 2, column 6: `a = 2`. Remove",
+    ),
     "table not closed": ("[study", "p.toml: a plan must be valid TOML; got a mistake at the end of the file (expected"),
     "list not closed": ("a = [1,\n", "got an invalid value at the end of the file. Text needs"),
     "nested too deeply": ("a = " + "[" * 100_000, "got brackets nested too deeply"),

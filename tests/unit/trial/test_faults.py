@@ -94,8 +94,8 @@ SUBJECT_FAULTS = {
     ),
     "text for 0 or 1": (
         [("good,0", "good,no"), ("fair,1", "fair,yes")],
-        "subjects.csv, lines 2 and 3: column 'rash' must be a number (endpoint[3] \"Rash\"; for text name the event in "
-        "the plan); got 'no' and 'yes'.",
+        "subjects.csv, lines 2 and 3: column 'rash' must be a number (endpoint[3] \"Rash\"); got 'no' and "
+        "'yes'. Write 0 and 1, or one word for the event, named in the plan, and one for no event.",
     ),
     "analysis set value absent": (
         [(",N,", ",Y,"), *[(",Y,", ",yes,")] * 8],
@@ -256,7 +256,8 @@ FILE_FAULTS = {
     "not UTF-8": (b"id,arm\n1,\xe9\n", "subjects.csv, line 2: a CSV file must be UTF-8 text; got a byte that is not."),
     "semicolons": (
         b"id;arm\n1;gel\n",
-        "subjects.csv, line 1: cells must be separated by commas; got 'id;arm'. Export with commas.",
+        "subjects.csv, line 1: cells must be separated by commas; got semicolons. Export with commas and decimal "
+        "points.",
     ),
 }
 
@@ -274,7 +275,9 @@ def test_a_folder_is_no_data_file(study):
     study.assemble()
     (study.folder / "subjects.csv").unlink()
     (study.folder / "subjects.csv").mkdir()
-    with pytest.raises(DataError, match=r"subjects\.csv: a data file must be readable; got 'is a directory'"):
+    with pytest.raises(
+        DataError, match=r"subjects\.csv: a data file must be a file; got a folder\. Name the file in it\."
+    ):
         study.again()
 
 
