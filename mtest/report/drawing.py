@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import re
+import textwrap
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -12,6 +13,8 @@ from xml.etree import ElementTree
 import matplotlib
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties
+from matplotlib.textpath import text_to_path
 
 ACCENT = "#0b5c8a"
 INK = "#20262c"
@@ -89,6 +92,20 @@ def to_picture(figure: Figure, *, key: str, label: str, caption: str) -> Picture
     root.set("role", "img")
     root.set("aria-label", label)
     return Picture(svg=ElementTree.tostring(root, encoding="unicode"), caption=caption, width=width)
+
+
+def text_width(text: str) -> float:
+    """Return how many inches the longest line of a text takes. Call it inside `canvas`."""
+    font, measure = FontProperties(), text_to_path.get_text_width_height_descent
+    return max(measure(line, font, ismath=False)[0] for line in text.split("\n")) / 72
+
+
+def wrap_text(text: str, *, room: float) -> str:
+    """Return a text in as many lines as keep it within so many inches. Call it inside `canvas`."""
+    letters = len(text)
+    while text_width(wrapped := textwrap.fill(text, letters)) > room and letters > 8:
+        letters -= 1
+    return wrapped
 
 
 def quiet_axis(axes: Axes) -> None:

@@ -6,13 +6,16 @@ Tables, figures, the page and the document are made from these records and decid
 from __future__ import annotations
 
 import math
+import re
 from dataclasses import dataclass
 
 from mtest.report import formats
-from mtest.report.wording import ERROR_RATE, procedure_in_words, sidedness, uses_maximum
+from mtest.report.wording import error_rate, procedure_in_words, sidedness, uses_maximum
 from mtest.results import AnalysisResult, ArmCount, Effect, FamilyResult, HypothesisResult
 
 PERCENT_MEASURES = ("risk difference",)  # shown in percentage points
+STRATIFIED_METHODS = ("strata", "Mantel-Haenszel")  # words of methods that adjust for strata
+_SENTENCE_END = re.compile(r"(?<=\.) (?=[A-Z])")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -51,6 +54,7 @@ class FamilyFacts:
 
     level : the error rate and its level in words, e.g. "familywise error rate of 5 %"
     answer : plain sentences, the first thing a reader meets
+    control : the control statement, sentence by sentence
     unsettled : one sentence for each decision the draws did not settle
     saving : what the correlation between the statistics saved; "" where not offered
     """
@@ -59,7 +63,7 @@ class FamilyFacts:
     key: str
     level: str
     answer: tuple[str, ...]
-    control: str
+    control: tuple[str, ...]
     unsettled: tuple[str, ...]
     saving: str
     hypotheses: tuple[HypothesisFacts, ...]
@@ -120,14 +124,14 @@ def _status(result: AnalysisResult) -> str:
 
 def _family_facts(family: FamilyResult, key: str) -> FamilyFacts:
     hypotheses = tuple(_hypothesis_facts(h, family) for h in family.hypotheses)
-    rate = ERROR_RATE.get(family.procedure, "familywise error rate")
+    rate = error_rate(family.procedure)
     level = f"{rate} of {formats.format_percent(family.alpha)}" if rate else "no error rate"
     return FamilyFacts(
         raw=family,
         key=key,
         level=level,
         answer=_answer(family, hypotheses, level if rate else ""),
-        control=family.control,
+        control=tuple(_SENTENCE_END.split(family.control)),
         unsettled=tuple(_hanging(h) for h in hypotheses if not h.raw.settled),
         saving=_saving(family),
         hypotheses=hypotheses,
@@ -179,7 +183,7 @@ def _saving(family: FamilyResult) -> str:
     joint = (
         f"judging these {m} hypotheses by their maximum {'costs' if own else 'would cost'} as much as judging "
         f"{formats.format_number(family.equivalent_endpoints, 1)} independent ones (the equivalent number of "
-        "independent endpoints)"
+        "independent hypotheses)"
     )
     levels = (
         f"each is held to {formats.format_p(family.local_alpha, alpha=1e-4)} where an equal split of "
@@ -204,20 +208,20 @@ def _hypothesis_facts(h: HypothesisResult, family: FamilyResult) -> HypothesisFa
     def p(value: float) -> str:
         return formats.format_p(value, alpha=alpha)
 
-    digits = min(max(formats.digits_for(h.sd_arm, fallback=0), formats.digits_for(h.sd_reference, fallback=0)), 3)
+    digits = _digits_of_means(h)
     reach = formats.format_p_range(h.p_adjusted_low, h.p_adjusted_high, alpha=alpha)
 
     return HypothesisFacts(
         raw=h,
         comparison=f"{h.arm} vs {h.reference}",
-        measure=measure_in_words(h.effect.measure, h.unit),
+        measure=measure_in_words(h.effect, h.unit),
         estimate=estimate,
         interval=interval,
         n_arm=f"{h.n_arm} ({h.missing_arm})",
         n_reference=f"{h.n_reference} ({h.missing_reference})",
         arm_summary=_summary(h.kind, h.mean_arm, h.sd_arm, h.n_arm, digits),
         reference_summary=_summary(h.kind, h.mean_reference, h.sd_reference, h.n_reference, digits),
-        others="; ".join(f"{e.measure} {' ('.join(effect_in_words(e))})" for e in h.other_effects),
+        others=_others(h.other_effects),
         statistic=formats.format_number(h.statistic_value, 2),
         p_unadjusted=p(h.p_unadjusted),
         p_model=p(h.p_model),
@@ -232,7 +236,7 @@ def _hypothesis_facts(h: HypothesisResult, family: FamilyResult) -> HypothesisFa
 
 
 def _decision(h: HypothesisResult, procedure: str) -> str:
-    if not ERROR_RATE.get(procedure, "familywise error rate"):
+    if not error_rate(procedure):
         return "nominal" if h.rejected else "–"
     return "rejected" if h.rejected else "not rejected"
 
@@ -260,14 +264,44 @@ def shown_scale(effect: Effect) -> float:
 
 def effect_in_words(effect: Effect) -> tuple[str, str]:
     """Return an estimate and its interval with the digits its standard error supports."""
-    scale = shown_scale(effect)
-    digits = formats.digits_for(_spread(effect) * scale, fallback=1 if scale > 1 else 2)
-    if effect.null == 1:
-        digits = max(digits, 2)  # a ratio of 0.2 says less than 0.15 or 0.24, whatever its interval
+    scale, digits = shown_scale(effect), _digits(effect)
     return (
         formats.format_number(effect.estimate * scale, digits),
         formats.format_range(effect.low * scale, effect.high * scale, digits),
     )
+
+
+def _digits(effect: Effect) -> int:
+    scale = shown_scale(effect)
+    digits = formats.digits_for(_spread(effect) * scale, fallback=1 if scale > 1 else 2)
+    return max(digits, 2) if effect.null == 1 else digits  # a ratio of 0.2 says less than 0.15 or 0.24
+
+
+def _digits_of_means(h: HypothesisResult) -> int:
+    """One decimal more than the effect on the means' own scale, else than their standard deviations support."""
+    if "mean difference" in h.effect.measure and math.isfinite(h.effect.se):
+        return _digits(h.effect) + 1
+    return max(formats.digits_for(sd, fallback=0) for sd in (h.sd_arm, h.sd_reference)) + 1
+
+
+def _others(effects: tuple[Effect, ...]) -> str:
+    """The other measures with their intervals, in one line."""
+    said = "; ".join(_other(effect) for effect in effects)
+    return f"adjusted for strata: {said}" if any(is_stratified(effect) for effect in effects) else said
+
+
+def _other(effect: Effect) -> str:
+    estimate, interval = effect_in_words(effect)
+    if estimate == formats.NOT_ESTIMABLE:
+        return f"{effect.measure} not estimable"
+    if interval == formats.NOT_ESTIMABLE:
+        interval = "interval not estimable"
+    return f"{effect.measure} {estimate} ({interval})"
+
+
+def is_stratified(effect: Effect) -> bool:
+    """Return whether the effect was estimated within strata, so that it is not the difference of the arms' values."""
+    return any(word in effect.method for word in STRATIFIED_METHODS)
 
 
 def _spread(effect: Effect) -> float:
@@ -277,12 +311,16 @@ def _spread(effect: Effect) -> float:
     return effect.se
 
 
-def measure_in_words(measure: str, unit: str) -> str:
-    """Return the measure with the unit it is displayed in."""
-    if measure in PERCENT_MEASURES:
-        return f"{measure}, percentage points"
-    # Probabilities and ratios have no unit, whatever the endpoint was measured in.
-    return f"{measure}, {unit}" if (unit and "difference" in measure) or (unit and "shift" in measure) else measure
+def measure_in_words(effect: Effect, unit: str) -> str:
+    """Return the measure with the unit it is displayed in, and whether it is adjusted for strata."""
+    parts = [effect.measure]
+    if effect.measure in PERCENT_MEASURES:
+        parts.append("percentage points")
+    elif unit and ("difference" in effect.measure or "shift" in effect.measure):
+        parts.append(unit)  # probabilities and ratios have no unit, whatever the endpoint was measured in
+    if is_stratified(effect):
+        parts.append("adjusted for strata")
+    return ", ".join(parts)
 
 
 def _summary(kind: str, mean: float, sd: float, n: int, digits: int) -> str:

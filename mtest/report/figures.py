@@ -9,7 +9,18 @@ from matplotlib.axes import Axes
 from matplotlib.colors import LinearSegmentedColormap
 
 from mtest.report import formats
-from mtest.report.drawing import ACCENT, INK, QUIET, RULE, Picture, canvas, quiet_axis, to_picture
+from mtest.report.drawing import (
+    ACCENT,
+    INK,
+    QUIET,
+    RULE,
+    Picture,
+    canvas,
+    quiet_axis,
+    text_width,
+    to_picture,
+    wrap_text,
+)
 from mtest.report.facts import FamilyFacts, HypothesisFacts, shown_scale
 from mtest.report.wording import procedure_in_words, uses_maximum
 
@@ -17,6 +28,8 @@ MOST_PANELS = 48  # endpoints drawn in the forest plots of a family
 MOST_ROWS = 60  # hypotheses drawn in the picture of adjustments
 MOST_SHADED = 240  # hypotheses beyond which correlations are counted, not shaded one by one
 NAMED_ROWS = 60  # hypotheses whose rows the correlation picture still names by endpoint
+SINGLE_ROWS = 20  # hypotheses whose rows it names one by one, with the arm
+LONGEST_NAME = 60  # letters of a row's name
 PANEL_WIDTH = 3.45  # inches; fits a telephone at its natural size
 BLUE_WHITE_ORANGE = LinearSegmentedColormap.from_list("mtest", ["#b35806", "#f7f7f5", ACCENT])
 
@@ -149,19 +162,18 @@ def draw_correlation(family: FamilyFacts) -> Picture | None:
     label = f"Correlation between {m} statistics under relabelling; the median size of a correlation is {middle}."
     if m > MOST_SHADED:
         return _count_correlations(off, middle, label, family.key)
-    with canvas(width=6.8, height=4.2) as figure:
+    names = _correlation_names(family) if m <= NAMED_ROWS else ()
+    with canvas(width=1.0, height=1.0) as figure:
+        side = max(3.6, 0.165 * len(names))
+        room = max((text_width(name) for name, _ in names), default=0.0)
+        figure.set_size_inches(side + room + 1.2, side + 0.2)
         axes = figure.add_subplot()
         shades = np.clip(np.asarray(matrix, float), -1, 1)
         image = axes.imshow(shades, cmap=BLUE_WHITE_ORANGE, vmin=-1, vmax=1, interpolation="none")
-        bounds = _runs([h.raw.endpoint for h in family.hypotheses])
-        if m <= NAMED_ROWS:
-            axes.set_yticks(
-                [(start + end - 1) / 2 for _, start, end in bounds], [_short(name, 27) for name, _, _ in bounds]
-            )
-        else:
-            axes.set_yticks([])
+        axes.set_yticks([place for _, place in names], [name for name, _ in names])
         axes.set_xticks([])
-        for _, _, end in _runs([h.raw.group for h in family.hypotheses])[:-1]:
+        groups = _runs([h.raw.group for h in family.hypotheses])
+        for _, _, end in groups[:-1]:
             axes.axhline(end - 0.5, color="white", linewidth=1.2)
             axes.axvline(end - 0.5, color="white", linewidth=1.2)
         for spine in axes.spines.values():
@@ -175,8 +187,29 @@ def draw_correlation(family: FamilyFacts) -> Picture | None:
             key=f"{family.key}-correlation",
             label=label,
             caption="Correlation between the statistics under relabelling, hypothesis by hypothesis in the order of "
-            f"the results table; the median size is {middle}. White lines part the groups of endpoints.",
+            f"the results table; the median size is {middle}."
+            + (_order_of_rows(family) if SINGLE_ROWS < m <= NAMED_ROWS else "")
+            + (" White lines part the groups of endpoints." if len(groups) > 1 else ""),
         )
+
+
+def _correlation_names(family: FamilyFacts) -> list[tuple[str, float]]:
+    """The names of rows and where they stand: of each hypothesis, or where those are many, of each endpoint."""
+    if len(family.hypotheses) > SINGLE_ROWS:
+        runs = _runs([h.raw.endpoint for h in family.hypotheses])
+        return [(_short(name, LONGEST_NAME), (start + end - 1) / 2) for name, start, end in runs]
+    one_reference = len({h.raw.reference for h in family.hypotheses}) == 1
+    names = [
+        f"{_short(h.raw.endpoint, LONGEST_NAME)}, {h.raw.arm if one_reference else h.comparison}"
+        for h in family.hypotheses
+    ]
+    return [(name, float(place)) for place, name in enumerate(names)]
+
+
+def _order_of_rows(family: FamilyFacts) -> str:
+    if len(family.comparisons) < 2:
+        return ""
+    return f" Rows of one endpoint, from top to bottom: {'; '.join(family.comparisons)}."
 
 
 def _count_correlations(off: np.ndarray, middle: str, label: str, key: str) -> Picture:
@@ -202,7 +235,9 @@ def _forest_panel(rows: list[HypothesisFacts], key: str) -> Picture:
     finite = [value for value in ends if math.isfinite(value)] + [null]
     room = (max(finite) - min(finite)) * 0.07 or 1.0
     left, right = min(finite) - room, max(finite) + room
-    with canvas(width=PANEL_WIDTH, height=0.62 + 0.235 * len(rows)) as figure:
+    with canvas(width=PANEL_WIDTH, height=1.0) as figure:
+        title = _forest_axis(rows[0])
+        figure.set_figheight(0.48 + 0.14 * (title.count("\n") + 1) + 0.235 * len(rows))
         axes = figure.add_subplot()
         axes.axvline(null, color=INK, linewidth=0.7, zorder=1)
         for row, h in enumerate(rows):
@@ -214,7 +249,7 @@ def _forest_panel(rows: list[HypothesisFacts], key: str) -> Picture:
             axes.locator_params(axis="x", nbins=5)
         else:  # nothing was estimated: an axis of numbers would pretend there is a scale
             axes.set_xticks([null])
-        axes.set_xlabel(_forest_axis(rows[0]))
+        axes.set_xlabel(title, loc="right", multialignment="left")  # may reach below the names
         quiet_axis(axes)
         label = "; ".join(f"{h.comparison}: {h.estimate} ({h.interval}), {h.decision}" for h in rows)
         name = rows[0].raw.endpoint
@@ -237,10 +272,15 @@ def _forest_row(axes: Axes, row: int, h: HypothesisFacts, scale: float, limits: 
 
 
 def _forest_axis(h: HypothesisFacts) -> str:
+    """The measure and the better side, in one line where the panel has room for it."""
     if "better" in h.raw.effect.measure:
-        return f"{h.measure}; right of the line is better"
-    side = "right" if h.raw.better == "higher" else "left"
-    return f"{h.measure}; {side} is better"
+        side = "right of the line is better"
+    else:
+        side = f"{'right' if h.raw.better == 'higher' else 'left'} is better"
+    room = PANEL_WIDTH - 0.15
+    if text_width(line := f"{h.measure}; {side}") <= room:
+        return line
+    return wrap_text(f"{h.measure};", room=room) + f"\n{side}"
 
 
 def _look(h: HypothesisFacts, sign: str, size: float) -> dict:

@@ -68,7 +68,7 @@ _ROUNDING = (
 
 def _randomisation(facts: ReportFacts) -> tuple[str, ...]:
     study = facts.result.study
-    words = SCHEMES.get(study.scheme, f"{study.scheme} randomisation")
+    words = SCHEMES[study.scheme]
     strata = f" Stratification factors: {', '.join(study.strata)}." if study.strata else ""
     return (
         f"The test relabels subjects in the way the study was randomised. {words[0].upper()}{words[1:]}. There are "
@@ -109,7 +109,7 @@ def _statistics(facts: ReportFacts) -> tuple[str, ...]:
         for h in family.hypotheses:
             rows.setdefault((h.raw.kind, h.raw.statistic), (h.raw.model, h.raw.effect.measure, h.raw.effect.method))
     kinds = (
-        f"{kind[0].upper()}{kind[1:]} endpoints: {STATISTICS.get(statistic, statistic)}. Model-based p: {model}. "
+        f"{kind[0].upper()}{kind[1:]} endpoints: {STATISTICS[statistic]}. Model-based p: {model}. "
         f"Estimate: {measure}; interval: {method}."
         for (kind, statistic), (model, measure, method) in rows.items()
     )
@@ -119,20 +119,20 @@ def _statistics(facts: ReportFacts) -> tuple[str, ...]:
 def _missing(facts: ReportFacts) -> tuple[str, ...]:
     rules = dict.fromkeys(count.rule for count in facts.accounting)
     return (
-        *(f"Rule “{rule}”: {MISSING_RULES.get(rule, 'as declared in the plan')}." for rule in rules),
+        *(f"Rule “{rule}”: {MISSING_RULES[rule]}." for rule in rules),
         "No subject is dropped from one endpoint because another is missing.",
     )
 
 
 def _family(family: FamilyFacts) -> tuple[str, ...]:
     raw = family.raw
-    source = PROCEDURES.get(raw.procedure, ("", ""))[1]
+    source = PROCEDURES[raw.procedure][1]
     cited = f" ({source})" if source else ""
     who = raw.analysis_set or "all randomised subjects"
     sentences = (
         f"Analysis set: {who}. Comparisons: {raw.comparisons}. Alternative: {sidedness(raw.alternative)}. Level: "
         f"{formats.format_plain(raw.alpha)}. Procedure: {procedure_in_words(raw.procedure)}{cited}.",
-        " ".join(part for part in (EXCHANGE.get(raw.exchange, raw.exchange), _across(family)) if part),
+        " ".join(part for part in (EXCHANGE[raw.exchange], _across(family)) if part),
         f"{'Relabellings enumerated' if raw.exact else 'Draws'}: {formats.format_count(raw.n_draws)}. Smallest "
         f"attainable p: {formats.format_number(raw.smallest_p, 6)}. Distinct relabellings: {_sets(family)}.",
         raw.control,
@@ -143,7 +143,7 @@ def _family(family: FamilyFacts) -> tuple[str, ...]:
 def _across(family: FamilyFacts) -> str:
     if len(family.comparisons) < 2 or family.raw.exchange == "all-arms":
         return ""
-    return ACROSS_PAIRS.get(family.raw.across_pairs, family.raw.across_pairs)
+    return ACROSS_PAIRS[family.raw.across_pairs]
 
 
 def _sets(family: FamilyFacts) -> str:

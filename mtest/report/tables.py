@@ -6,8 +6,8 @@ import math
 from dataclasses import dataclass, replace
 
 from mtest.report import formats
-from mtest.report.facts import FamilyFacts, HypothesisFacts, ReportFacts
-from mtest.report.wording import ERROR_RATE
+from mtest.report.facts import FamilyFacts, HypothesisFacts, ReportFacts, is_stratified
+from mtest.report.wording import error_rate
 
 REJECTED, KEPT, HANGING = "●", "○", "◐"
 LONG_MATRIX = 60  # endpoints beyond which the decision matrix shows only those with a rejection
@@ -84,6 +84,7 @@ def results_table(family: FamilyFacts) -> Table:
     rows = tuple(_results_row(h) for h in family.hypotheses)
     notes = (
         f"{_set(family)}; {family.level}; procedure: {family.raw.procedure}.",
+        *_raw_columns(family),
         "Estimates are arm less reference. Intervals are textbook intervals, not simultaneous: they may disagree with "
         "the adjusted p.",
         "p, unadjusted: by relabelling. p, model: the textbook test. p, Holm: the unadjusted p after Holm. "
@@ -125,6 +126,7 @@ def summaries_table(family: FamilyFacts) -> Table:
     notes = (
         "Arm and reference: mean (standard deviation) of the values as analysed, for ordinal endpoints of their "
         "ordered values; for binary endpoints number with the event (share).",
+        *_raw_columns(family),
         "Near ties: draws that fall short of the observed statistic by so little that rounding might have decided.",
     )
     caption = f"Summaries and test statistics, family “{family.raw.name}”"
@@ -238,8 +240,18 @@ def _set(family: FamilyFacts) -> str:
     return f"Analysis set: {family.raw.analysis_set or 'all randomised subjects'}"
 
 
+def _raw_columns(family: FamilyFacts) -> tuple[str, ...]:
+    """Why an estimate is not the difference of what stands in the arms' columns."""
+    if not any(is_stratified(h.raw.effect) for h in family.hypotheses):
+        return ()
+    return (
+        "The arm and reference columns of the summaries are raw means and shares. Measures adjusted for strata are put "
+        "together from comparisons within strata, so they differ from what the two columns alone would give.",
+    )
+
+
 def _legend(family: FamilyFacts) -> str:
     hanging = f"; {HANGING} not settled by the draws made" if family.unsettled else ""
-    if not ERROR_RATE.get(family.raw.procedure, "familywise error rate"):
+    if not error_rate(family.raw.procedure):
         return f"{REJECTED} nominal p at or below {formats.format_plain(family.raw.alpha)}; {KEPT} above it{hanging}."
     return f"{REJECTED} rejected (better or worse: what the tested arm did); {KEPT} not rejected{hanging}."

@@ -60,7 +60,7 @@ def write_word(result: AnalysisResult, path: str | PathLike[str]) -> None:
     _add_list(document, facts.warnings, "Warnings for the study")
     for family in facts.families:
         document.add_page_break()
-        subtitle = (f"Analysis set: {family.raw.analysis_set or 'all randomised subjects'}", family.control)
+        subtitle = (f"Analysis set: {family.raw.analysis_set or 'all randomised subjects'}", family.raw.control)
         _add_table(document, results_table(family), subtitle)
         document.add_page_break()
         _add_table(document, summaries_table(family), subtitle[:1])
@@ -112,7 +112,7 @@ def _set_page(document: DocumentObject, facts: ReportFacts) -> None:
 def _add_answer(document: DocumentObject, family: FamilyFacts) -> None:
     document.add_heading(f"The answer, family “{family.raw.name}”", level=1)
     document.add_paragraph().add_run(" ".join(family.answer)).bold = True
-    document.add_paragraph(f"What is controlled. {family.control}")
+    _add_list(document, family.control, "What is controlled")
     _add_list(document, family.unsettled, "Not settled by the draws made")
     _add_list(document, family.warnings, "Warnings for this family")
     if family.saving:

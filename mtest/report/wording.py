@@ -103,9 +103,9 @@ GLOSSARY: dict[str, tuple[str, str]] = {
         "all hypotheses reaches when no arm does anything.",
     ),
     "equivalent": (
-        "Equivalent number of independent endpoints",
+        "Equivalent number of independent hypotheses",
         "The number of independent hypotheses that would need the same critical value: log(1 − alpha) / "
-        "log(1 − local alpha).",
+        "log(1 − local alpha). With a single comparison it is the equivalent number of independent endpoints.",
     ),
     "filled": ("Filled", "Subjects analysed whose missing outcome was replaced by the endpoint's rule."),
 }
@@ -171,7 +171,12 @@ REFERENCES: dict[str, str] = {
 
 def procedure_in_words(procedure: str) -> str:
     """Return the procedure's name as it stands in a sentence."""
-    return PROCEDURES.get(procedure, (procedure, ""))[0]
+    return PROCEDURES[procedure][0]
+
+
+def error_rate(procedure: str) -> str:
+    """Return the error rate the procedure aims at; "" for none."""
+    return ERROR_RATE.get(procedure, "familywise error rate")
 
 
 def uses_maximum(procedure: str) -> bool:

@@ -46,7 +46,7 @@ def invented():
     return module
 
 
-@pytest.fixture(scope="session", params=["four_arms", "two_families"])
+@pytest.fixture(scope="session", params=["four_arms", "two_families", "crowded"])
 def report(request, invented, tmp_path_factory):
     """The path of a report page."""
     from mtest.report.page import render_page

@@ -152,7 +152,9 @@ def test_text_of_pictures_stays_legible_on_a_telephone(opened, set_width):
     assert min(sizes) >= 8
 
 
-def test_no_text_of_a_picture_is_cut_off(opened):
+@pytest.mark.parametrize("width", [390, 1280])
+def test_no_text_of_a_picture_is_cut_off(opened, set_width, width):
+    set_width(opened, width)
     cut = opened.execute_script(
         "return Array.from(document.querySelectorAll('figure svg')).flatMap((svg) => {"
         "const frame = svg.getBoundingClientRect();"

@@ -27,5 +27,10 @@ def four_arms(invented):
 
 
 @pytest.fixture(scope="session")
+def crowded(invented):
+    return invented.crowded()
+
+
+@pytest.fixture(scope="session")
 def two_families(invented):
     return invented.two_families()

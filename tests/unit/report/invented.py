@@ -241,6 +241,34 @@ def four_arms() -> AnalysisResult:
     return AnalysisResult(study=study_facts(), families=(family,), accounting=accounting, warnings=(), run=run_facts())
 
 
+def crowded() -> AnalysisResult:
+    """One comparison of 14 endpoints without groups, adjusted for strata, with long names; one ratio without an end."""
+    family, accounting = four_arm_family("all")
+    hypotheses = [
+        replace(
+            h,
+            group="",
+            unit="points of 100 on the long scale" if h.unit else "",
+            arm="neck gel 4 %, three times daily",
+            effect=replace(h.effect, method="Mantel-Haenszel, Sato variance"),
+            other_effects=tuple(replace(e, method="Mantel-Haenszel, SE of log") for e in h.other_effects),
+        )
+        for h in family.hypotheses[2::3]
+    ]
+    bare = replace(hypotheses[4].other_effects[0], estimate=0.0, low=math.nan, high=math.nan)
+    hypotheses[4] = replace(hypotheses[4], other_effects=(bare,))
+    family = replace(
+        family,
+        hypotheses=tuple(hypotheses),
+        across_pairs="",
+        n_distinct=family.n_distinct[2:],
+        correlation=family.correlation[2::3, 2::3],
+        equivalent_endpoints=math.nan,
+        local_alpha=math.nan,
+    )
+    return AnalysisResult(study=study_facts(), families=(family,), accounting=accounting, warnings=(), run=run_facts())
+
+
 def two_families() -> AnalysisResult:
     """The awkward one: an enumerated family without null, correlation or estimates, and one that is not settled."""
     family, accounting = four_arm_family("main <b>& first</b>")

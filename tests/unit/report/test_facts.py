@@ -3,8 +3,10 @@
 import math
 from dataclasses import replace
 
+import numpy as np
 import pytest
 
+from mtest.estimate.effects import estimate_effects
 from mtest.report import facts as f
 from mtest.report.method import describe_method, describe_run, list_references
 from mtest.report.wording import ERROR_RATE, PROCEDURES, REFERENCES
@@ -94,6 +96,53 @@ def test_direction_falls_back_on_the_means_where_there_is_no_estimate(four_arms)
     h = replace(h, better="higher", mean_arm=1.0, mean_reference=2.0, effect=replace(h.effect, estimate=math.nan))
     assert f.direction_of(h) == "worse"
     assert f.direction_of(replace(h, mean_arm=math.nan)) == ""
+
+
+@pytest.mark.parametrize(
+    ("method", "measure"),
+    [
+        ("Welch t", "mean difference, mm"),
+        ("linear model with strata, t", "mean difference, mm, adjusted for strata"),
+        ("Mantel-Haenszel, Sato variance", "mean difference, mm, adjusted for strata"),
+    ],
+)
+def test_a_measure_says_where_it_is_adjusted_for_strata(four_arms, method, measure):
+    effect = replace(four_arms.families[0].hypotheses[0].effect, method=method)
+    assert f.measure_in_words(effect, "mm") == measure
+
+
+@pytest.mark.parametrize("kind", ["continuous", "ordinal", "binary"])
+@pytest.mark.parametrize("n_strata", [1, 2])
+def test_an_effect_counts_as_stratified_where_there_was_more_than_one_stratum(kind, n_strata):
+    """Told by the words of the method: one renamed in mtest.estimate must not lose its label."""
+    subject = np.arange(40)
+    values = (subject % 3 == 0).astype(float)
+    effects = estimate_effects(
+        kind, "any", values=values, in_arm=subject % 2 == 0, stratum=subject // 2 % n_strata, better="higher"
+    )
+    assert {f.is_stratified(effect) for effect in effects} == {n_strata > 1}
+
+
+def test_other_measures_say_that_they_are_adjusted_and_which_interval_is_missing(crowded):
+    hypotheses = f.gather_facts(crowded).families[0].hypotheses
+    assert hypotheses[4].others == "adjusted for strata: risk ratio 0.00 (interval not estimable)"
+    assert hypotheses[0].others.startswith("adjusted for strata: standardised difference ")
+
+
+def test_means_have_one_decimal_more_than_the_difference(four_arms):
+    h = four_arms.families[0].hypotheses[0]
+    h = replace(h, mean_arm=3.14, sd_arm=23.41, effect=replace(h.effect, estimate=-1.2, se=12.0, low=-25.0, high=22.0))
+    family = replace(four_arms.families[0], hypotheses=(h,))
+    (shown,) = f.gather_facts(replace(four_arms, families=(family,))).families[0].hypotheses
+    assert (shown.estimate, shown.arm_summary) == ("\u22121", "3.1 (23.4)")
+
+
+def test_the_control_statement_is_parted_between_sentences_and_loses_no_word(four_arms):
+    words = "Strong control. Across pairs (Boole's inequality): p = (1 + S)/(1 + B); 0.060 at 0.05. Others stay out."
+    family = replace(four_arms.families[0], control=words)
+    control = f.gather_facts(replace(four_arms, families=(family,))).families[0].control
+    assert len(control) == 3
+    assert " ".join(control) == words
 
 
 def test_risk_differences_are_shown_in_percentage_points(four_arms):

@@ -51,9 +51,24 @@ class Outline(HTMLParser):
             self.faults.append(tag)
 
 
-@pytest.fixture(scope="module", params=["four_arms", "two_families"])
+@pytest.fixture(scope="module")
+def four_arms_page(four_arms):
+    return render_page(four_arms)
+
+
+@pytest.fixture(scope="module")
+def crowded_page(crowded):
+    return render_page(crowded)
+
+
+@pytest.fixture(scope="module")
+def two_families_page(two_families):
+    return render_page(two_families)
+
+
+@pytest.fixture(scope="module", params=["four_arms_page", "two_families_page", "crowded_page"])
 def page(request):
-    return render_page(request.getfixturevalue(request.param))
+    return request.getfixturevalue(request.param)
 
 
 def test_tags_are_balanced(page):
@@ -107,9 +122,9 @@ def test_a_p_value_is_never_printed_as_zero_or_one(page):
     assert not [cell for cell in cells if re.fullmatch(r"\W*(0\.000|1\.000)\W*", cell)]
 
 
-def test_the_same_result_gives_the_same_page_whenever_it_was_run(four_arms):
+def test_the_same_result_gives_the_same_page_whenever_it_was_run(four_arms, four_arms_page):
     later = replace(four_arms, run=replace(four_arms.run, finished_utc="2031-01-01T00:00:00Z"))
-    assert render_page(four_arms) == render_page(later)
+    assert four_arms_page == render_page(later)
 
 
 def test_the_control_statement_stands_word_for_word_in_the_answer(four_arms):
@@ -173,6 +188,47 @@ def test_a_family_of_one_hypothesis_without_any_number_still_renders(four_arms):
     bare = replace(family, hypotheses=(lost,), null=None, correlation=None)
     page = render_page(replace(four_arms, families=(bare,)))
     assert "No p-value to draw." in page
+
+
+def test_groups_are_spoken_of_only_where_there_are_some(four_arms_page, crowded_page):
+    for words in ("White lines part the groups", "<h4"):
+        assert words in four_arms_page
+        assert words not in crowded_page
+    assert "Other endpoints" not in crowded_page
+
+
+def test_endpoints_without_a_group_are_set_apart_from_those_with_one(four_arms):
+    family = four_arms.families[0]
+    mixed = tuple(replace(h, group="" if h.group == "Tolerability" else h.group) for h in family.hypotheses)
+    page = render_page(replace(four_arms, families=(replace(family, hypotheses=mixed),)))
+    assert page.count(">Other endpoints</h4>") == 1
+
+
+def test_a_caption_that_says_what_the_heading_says_is_for_screen_readers_only(page):
+    spoken = re.findall(r'<caption [^>]*class="spoken">([^<,]*)', page)
+    shown = re.findall(r'<caption id="[^"]*">([^<,]*)', page)
+    assert set(spoken) == {"Results"}
+    assert "Summaries and test statistics" in shown
+
+
+def test_few_hypotheses_are_named_one_by_one_in_the_picture_of_correlations(crowded, crowded_page):
+    page = crowded_page
+    picture = page[page.index('<section id="correlation"') : page.index('<section id="accounting"')]
+    names = re.findall(r">([^<>]+), neck gel 4 %, three times daily</text>", picture)
+    assert names == [h.endpoint for h in crowded.families[0].hypotheses]
+
+
+def test_many_hypotheses_are_named_by_endpoint_and_the_order_of_their_arms_is_told(four_arms_page):
+    page = four_arms_page
+    picture = page[page.index('<section id="correlation"') : page.index('<section id="accounting"')]
+    assert ">Pain at rest, change to week 12</text>" in picture
+    assert "from top to bottom: 1 % vs vehicle; 2 % vs vehicle; 4 % vs vehicle." in picture
+
+
+def test_both_ways_to_the_same_digits_are_named(page):
+    reproduction = page[page.index('<section id="reproduction"') :]
+    assert "mtest run plan.toml" in reproduction
+    assert "mtest replay BUNDLE" in reproduction
 
 
 def test_a_screen_of_hundreds_of_endpoints_stays_readable(four_arms):

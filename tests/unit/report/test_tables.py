@@ -23,6 +23,13 @@ def test_every_row_has_as_many_cells_as_there_are_columns(two_families):
         assert {len(row) for row in table.rows} == {len(table.columns)}
 
 
+def test_where_estimates_are_adjusted_for_strata_the_notes_call_the_arms_columns_raw(four_arms, crowded):
+    for result, expected in ((four_arms, 0), (crowded, 1)):
+        family = gather_facts(result).families[0]
+        for table in (tables.results_table(family), tables.summaries_table(family)):
+            assert sum("raw means and shares" in note for note in table.notes) == expected
+
+
 def test_every_column_term_stands_in_the_glossary(four_arms):
     family = gather_facts(four_arms).families[0]
     terms = {column.term for column in tables.results_table(family).columns if column.term}
