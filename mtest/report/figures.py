@@ -31,6 +31,7 @@ NAMED_ROWS = 60  # hypotheses whose rows the correlation picture still names by 
 SINGLE_ROWS = 20  # hypotheses whose rows it names one by one, with the arm
 LONGEST_NAME = 60  # letters of a row's name
 PANEL_WIDTH = 3.45  # inches; fits a telephone at its natural size
+NAME_WIDTH = 1.3  # inches of it for the names of comparisons
 BLUE_WHITE_ORANGE = LinearSegmentedColormap.from_list("mtest", ["#b35806", "#f7f7f5", ACCENT])
 
 
@@ -237,14 +238,16 @@ def _forest_panel(rows: list[HypothesisFacts], key: str) -> Picture:
     left, right = min(finite) - room, max(finite) + room
     with canvas(width=PANEL_WIDTH, height=1.0) as figure:
         title = _forest_axis(rows[0])
-        figure.set_figheight(0.48 + 0.14 * (title.count("\n") + 1) + 0.235 * len(rows))
+        names = [wrap_text(h.comparison, room=NAME_WIDTH) for h in rows]
+        lines = max(name.count("\n") for name in names)
+        figure.set_figheight(0.48 + 0.14 * (title.count("\n") + 1) + (0.235 + 0.14 * lines) * len(rows))
         axes = figure.add_subplot()
         axes.axvline(null, color=INK, linewidth=0.7, zorder=1)
         for row, h in enumerate(rows):
             _forest_row(axes, row, h, scale, (left, right))
         axes.set_xlim(left, right)
         axes.set_ylim(len(rows) - 0.4, -0.6)
-        axes.set_yticks(range(len(rows)), [h.comparison for h in rows])
+        axes.set_yticks(range(len(rows)), names)
         if len(finite) > 1:
             axes.locator_params(axis="x", nbins=5)
         else:  # nothing was estimated: an axis of numbers would pretend there is a scale
