@@ -171,6 +171,8 @@ def draw_correlation(family: FamilyFacts) -> Picture | None:
         axes = figure.add_subplot()
         shades = np.clip(np.asarray(matrix, float), -1, 1)
         image = axes.imshow(shades, cmap=BLUE_WHITE_ORANGE, vmin=-1, vmax=1, interpolation="none")
+        # Names to the right: on a telephone the square is seen first, the names by scrolling.
+        axes.yaxis.tick_right()
         axes.set_yticks([place for _, place in names], [name for name, _ in names])
         axes.set_xticks([])
         groups = _runs([h.raw.group for h in family.hypotheses])
@@ -180,7 +182,7 @@ def draw_correlation(family: FamilyFacts) -> Picture | None:
         for spine in axes.spines.values():
             spine.set_visible(False)
         axes.tick_params(length=0)
-        bar = figure.colorbar(image, ax=axes, shrink=0.85, ticks=[-1, -0.5, 0, 0.5, 1])
+        bar = figure.colorbar(image, ax=axes, location="left", shrink=0.85, ticks=[-1, -0.5, 0, 0.5, 1])
         bar.set_ticklabels([f"{formats.MINUS}1", f"{formats.MINUS}0.5", "0", "0.5", "1"])
         bar.outline.set_visible(False)
         return to_picture(
