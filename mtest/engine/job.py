@@ -14,7 +14,9 @@ from mtest.relabel.sources import DrawnLabels, EnumeratedLabels
 Panel = PairPanel | SeveralPanel
 
 CHUNK_ROWS = 256  # hypotheses computed together: their statistics for one batch of draws stay in the L2 cache
-L2_BYTES = 1 << 21  # working memory aimed at, a common L2 cache; measured in tests/bench
+# Working memory of a batch. One panel's arrays then fit a common L2 cache; all of a batch's do not, but numpy calls are
+# long enough for threads to run side by side, which was worth 45 % on two cores (tests/bench).
+BATCH_BYTES = 1 << 23
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -122,8 +124,8 @@ def _observe(panels: list[Panel], n: int, sets: tuple[ReferenceSet, ...]) -> tup
 
 
 def _batch_size(rows: int, sets: tuple[ReferenceSet, ...], panels: list[Panel]) -> int:
-    """Return a power of two of draws whose statistics, sums and labels fit the cache."""
+    """Return a power of two of draws whose statistics, sums and labels fit the batch's memory."""
     widest = max(len(s.subjects) for s in sets)
     tallest = min(max(len(panel.stack) for panel in panels), 2 * CHUNK_ROWS)
     bytes_per_draw = 8 * (rows + tallest + 1.5 * widest)
-    return int(2 ** np.clip(np.floor(np.log2(L2_BYTES / bytes_per_draw)), 4, 10))
+    return int(2 ** np.clip(np.floor(np.log2(BATCH_BYTES / bytes_per_draw)), 4, 10))
