@@ -27,7 +27,13 @@ def main(studies: int, path: Path) -> None:
         "|---|---|---|---|",
     ]
     path.parent.mkdir(parents=True, exist_ok=True)
+    # An interrupted run goes on: rows already in the file are kept.
+    old = path.read_text(encoding="utf-8").splitlines() if path.exists() else []
+    done = {line.split("|")[1].strip(): line for line in old if line.startswith("| ")}
     for scenario in TWO_ARMS + SEVERAL_ARMS:
+        if scenario.name in done:
+            lines.append(done[scenario.name])
+            continue
         started = time.perf_counter()
         modes = ("joint",) if scenario in TWO_ARMS else MODES
         rates = [count_errors(scenario, mode, studies=studies, seed=SEED) / studies for mode in modes]

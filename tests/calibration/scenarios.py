@@ -147,14 +147,14 @@ SEVERAL_ARMS = [
     *_arms("4 arms 20 each", (20,) * 4),
     *_arms("4 arms 60:20:20:20", (60, 20, 20, 20)),
     *_arms("4 arms 15:40:40:40", (15, 40, 40, 40)),
-    *_arms("7 arms 15 each", (15,) * 7),
-    *_arms("7 arms 90:15x6", (90, *(15,) * 6)),
-    *_arms("7 arms 10:20x6", (10, *(20,) * 6)),
     *_arms("3 arms 40:30:10", (40, 30, 10)),
     *_arms("4 arms 20 each, all pairs", (20,) * 4, comparisons="all pairs"),
     *_arms("4 arms 90:15:15:15, all pairs", (90, 15, 15, 15), comparisons="all pairs"),
     *_arms("4 arms 60:20:20:20, one-sided", (60, 20, 20, 20), two_sided=False),
     *_arms("4 arms 20 each, skewed", (20,) * 4, law="skewed"),
     *_arms("4 arms 30:20:20:20 in 6 strata", (30, 20, 20, 20), strata=6),
+    *_arms("7 arms 15 each", (15,) * 7),
+    *_arms("7 arms 90:15x6", (90, *(15,) * 6)),
+    *_arms("7 arms 10:20x6", (10, *(20,) * 6)),
 ]
 MODES = ("joint", "boole", "all-arms")
