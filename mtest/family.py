@@ -214,7 +214,7 @@ def _run(design: Design, spec: FamilySpec, pairs, sets, *, n_jobs, report) -> _R
     def settled(tally: Tally) -> bool:
         own = np.arange(len(place))
         run = _Run(place=own, job=job, thresholds=thresholds, tally=tally, pilot=pilot, exact=exact)
-        return _is_settled(alone, run, n_jobs=1 + len(spec.pairs) - len(pairs))
+        return _is_settled(alone, run, most_pairs=1 + len(spec.pairs) - len(pairs))
 
     tally = run_job(
         job,
@@ -319,13 +319,13 @@ def _step_down(tails: list[np.ndarray]) -> tuple[list[np.ndarray], list[np.ndarr
     return across_pairs_step_down(tails)
 
 
-def _is_settled(spec: FamilySpec, run: _Run, *, n_jobs: int) -> bool:
+def _is_settled(spec: FamilySpec, run: _Run, *, most_pairs: int) -> bool:
     """Return whether every decision of a job lies on one side of alpha.
 
-    Under "boole" a pair does not know how many of the jobs are left when its turn comes, so every multiple counts.
+    Under "boole" a pair does not know how many pairs are left when its turn comes, so every multiple counts.
     """
     columns = _adjust(spec, [run])
-    levels = spec.alpha / np.arange(1, n_jobs + 1)
+    levels = spec.alpha / np.arange(1, most_pairs + 1)
     return all(bool(np.all((columns["low"] > level) | (columns["high"] <= level))) for level in levels)
 
 
